@@ -1,0 +1,1 @@
+"""Second floor: what is computed from the effects' summed contributions. No file, no printing."""

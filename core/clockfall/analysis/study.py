@@ -1,0 +1,185 @@
+"""A study: one system drawn, its masses known, its effects sorted; the start of every analysis."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, replace
+from types import MappingProxyType
+
+import numpy as np
+
+from clockfall.analysis.draws import DEFAULT_DRAWS, DEFAULT_SEED, Sample
+from clockfall.analysis.outcome import Drawn, Finding, Outcome, Said, UsedEffect
+from clockfall.analysis.system import System
+from clockfall.binary.ranges import FloatArray
+from clockfall.effects.checks import Contribution
+from clockfall.effects.host import Applied
+
+
+@dataclass(frozen=True, slots=True)
+class Choices:
+    """What a user chose beside the system file.
+
+    Attributes
+    ----------
+    draws, seed : int
+        Of the sample.
+    only, without : tuples of effect names
+        Added to what the system file says; `only` stands in for the file's.
+    use : tuple of str
+        The measured parameters that weigh the two bodies; empty for the default pair.
+    """
+
+    draws: int = DEFAULT_DRAWS
+    seed: int = DEFAULT_SEED
+    only: tuple[str, ...] | None = None
+    without: tuple[str, ...] = ()
+    use: tuple[str, ...] = ()
+
+    def with_system(self, system: System) -> Choices:
+        """Return these choices joined with those of the system file."""
+        only = self.only if self.only is not None else system.only
+        return replace(self, only=only, without=(*system.without, *self.without))
+
+
+@dataclass(frozen=True, slots=True)
+class Prediction:
+    """One predicted number, summed over effects; NaN where it has no meaning.
+
+    Attributes
+    ----------
+    intrinsic, apparent : array, shape batch [unit]
+        Sums by nature; a parameter that is no rate is all intrinsic.
+    contributions : tuple of Contribution
+        What was summed.
+    """
+
+    name: str
+    unit: str
+    shown_in: str
+    meaning: str
+    intrinsic: FloatArray
+    apparent: FloatArray
+    contributions: tuple[Contribution, ...]
+
+    @property
+    def total(self) -> FloatArray:
+        """As it should be observed."""
+        return self.intrinsic + self.apparent
+
+
+def predictions(applied: Applied, given_apparent: Mapping[str, FloatArray]) -> Mapping[str, Prediction]:
+    """Sum what the effects contribute, by name of rate or parameter.
+
+    Where the system gives an apparent part itself, that stands in for what apparent effects contribute to this rate.
+    """
+    by_name: dict[str, list[Contribution]] = {}
+    for contribution in (*applied.secular_rates(), *applied.predicted_parameters()):
+        by_name.setdefault(contribution.name, []).append(contribution)
+    summed = {}
+    for name, parts in by_name.items():
+        if name in given_apparent:
+            parts = [part for part in parts if part.card.nature == "intrinsic"]
+        zero = np.zeros(applied.state.shape)
+        intrinsic = sum((p.values for p in parts if p.card.nature == "intrinsic"), start=zero)
+        apparent = sum((p.values for p in parts if p.card.nature == "apparent"), start=zero)
+        first = by_name[name][0]
+        summed[name] = Prediction(
+            name,
+            first.unit,
+            first.shown_in,
+            first.meaning,
+            intrinsic,
+            given_apparent.get(name, apparent) + zero,
+            tuple(parts),
+        )
+    return MappingProxyType(summed)
+
+
+@dataclass(frozen=True, slots=True)
+class Study:
+    """A system ready to be analysed.
+
+    Attributes
+    ----------
+    sample : Sample
+        With both masses in its state, given or weighed.
+    applied : Applied
+        The effects, sorted for that state.
+    predicted : mapping of name to Prediction
+        All sums.
+    masses_from : str
+        "given" or "weighed".
+    cautions : tuple of Said
+        What came up on the way.
+    """
+
+    system: System
+    choices: Choices
+    sample: Sample
+    applied: Applied
+    predicted: Mapping[str, Prediction]
+    masses_from: str
+    used: tuple[str, ...] = ()
+    cautions: tuple[Said, ...] = ()
+
+    def finding(self, quantity: str, role: str, values: FloatArray, unit: str, shown_in: str, meaning: str) -> Finding:
+        """Return a finding from an array over the batch."""
+        return Finding(quantity, role, Drawn.from_batch(values, self.sample.possible), unit, shown_in, meaning)
+
+    def contribution(self, contribution: Contribution) -> Finding:
+        """Return one effect's contribution as a finding."""
+        plain = self.finding(
+            contribution.name,
+            "contribution",
+            contribution.values,
+            contribution.unit,
+            contribution.shown_in,
+            contribution.card.summary,
+        )
+        card = contribution.card
+        return replace(plain, effect=card.name, nature=card.nature, sources=card.sources)
+
+    def outcome(self, findings: Iterable[Finding], facts: Mapping[str, str], cautions: Iterable[Said] = ()) -> Outcome:
+        """Close the study: findings with all that is to be said beside them."""
+        applied = self.applied
+        by_effects = [Said(effect, caution.statement) for effect, caution in applied.cautions()]
+        return Outcome(
+            findings=tuple(findings),
+            facts=MappingProxyType({**self._facts(), **facts}),
+            used=tuple(
+                UsedEffect(e.name, e.version, e.distribution, _settings_text(applied.settings_of(e)))
+                for e in applied.active
+            ),
+            idle=tuple(Said(idle.effect, idle.reason) for idle in applied.idle),
+            failed=tuple(Said(error.effect, str(error)) for error in applied.failures),
+            cautions=(*self.cautions, *_set_aside(self), *cautions, *by_effects),
+            draws=self.sample.draws,
+            seed=self.sample.seed,
+        )
+
+    def _facts(self) -> dict[str, str]:
+        own = {"system": self.system.name, "masses_from": self.masses_from}
+        epoch = self.system.periastron_epoch
+        return own if epoch is None else {**own, "epoch_mjd_tdb": str(epoch.to_decimal())}
+
+
+def _settings_text(settings: Mapping[str, FloatArray]) -> str:
+    """Write the central values of an effect's own parameters as JSON."""
+    return json.dumps({name: float(values[0]) for name, values in settings.items()}) if settings else ""
+
+
+def _set_aside(study: Study) -> Iterable[Said]:
+    """Say which draws were set aside, and why."""
+    sample = study.sample
+    for name, count in sample.set_aside.items():
+        yield Said("", f"{name}: {count} of {sample.draws} draws fell outside its range and are set aside")
+    for prediction in study.predicted.values():
+        for part in prediction.contributions:
+            lost = int(np.sum(np.isnan(part.values[1:]) & sample.possible[1:]))
+            if lost:
+                share = lost / sample.draws
+                yield Said(
+                    part.card.name, f"{part.name}: {share:.1%} of the draws set aside, which lack {part.defined_where}"
+                )

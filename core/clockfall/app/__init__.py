@@ -1,0 +1,1 @@
+"""Top floor: the command line. No physics."""

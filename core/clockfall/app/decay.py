@@ -1,0 +1,117 @@
+"""The main job: `clockfall decay`."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from pathlib import Path
+from typing import Any
+
+import click
+
+from clockfall.analysis.budget import DECAY, decay
+from clockfall.analysis.outcome import Finding, Outcome
+from clockfall.app.analyses import Analysis, Block
+from clockfall.app.numbers import (
+    aligned,
+    as_json,
+    as_text,
+    common_power,
+    finite,
+    time_unit,
+    unit_heading,
+)
+from clockfall.app.options import Wishes, analysis_options, run_analysis
+
+
+def report(outcome: Outcome) -> dict[str, Any]:
+    """Return the budget as programs read it."""
+    tension = outcome.get(DECAY, "tension_sigma")
+    numbers = ("predicted_intrinsic", "apparent", "measured", "intrinsic_observed", "ratio")
+    found = {role: outcome.get(DECAY, role) for role in numbers}
+    as_numbers = {role: None if finding is None else as_json(finding) for role, finding in found.items()}
+    merger = outcome.get("merger_time")
+    epoch = outcome.facts.get("epoch_mjd_tdb")
+    return {
+        "epoch_mjd_tdb": None if epoch is None else float(epoch),
+        DECAY: {
+            "contributions": [
+                {"effect": f.effect, "nature": f.nature, **as_json(f), "sources": list(f.sources)}
+                for f in outcome.contributions(DECAY)
+            ],
+            "predicted_intrinsic": as_numbers["predicted_intrinsic"],
+            "apparent": as_numbers["apparent"],
+            "observed": as_numbers["measured"],
+            "intrinsic_observed": as_numbers["intrinsic_observed"],
+            "ratio": as_numbers["ratio"],
+            "tension_sigma": None if tension is None else finite(tension.drawn.central),
+        },
+        "masses": {
+            "mass_1": as_json(outcome["mass_1", ""]),
+            "mass_2": as_json(outcome["mass_2", ""]),
+            "from": outcome.facts["masses_from"],
+        },
+        "merger_time": None if merger is None else as_json(merger),
+    }
+
+
+_SUMS = (
+    ("predicted_intrinsic", "predicted", "intrinsic"),
+    ("apparent", "apparent parts", "apparent"),
+    ("measured", "measured", "both"),
+    ("intrinsic_observed", "measured, apparent off", "intrinsic"),
+)
+
+
+def blocks(outcome: Outcome) -> Iterator[Block]:
+    """Yield the budget, and what follows from it."""
+    contributions = outcome.contributions(DECAY)
+    sums = [(label, nature, f) for role, label, nature in _SUMS if (f := outcome.get(DECAY, role))]
+    if sums:
+        power = common_power(f for _, _, f in sums)
+        shown = [*contributions, *(f for _, _, f in sums)]
+        texts = aligned([as_text(f, power=power, with_unit=False) for f in shown])
+        labels = [*((f.effect, f.nature) for f in contributions), *((label, nature) for label, nature, _ in sums)]
+        rows: list[tuple[str, ...]] = [(*label, text) for label, text in zip(labels, texts, strict=True)]
+        rows.insert(len(contributions), ())
+        heading = ("effect", "nature", unit_heading(sums[0][2].shown_in, power))
+        yield Block(tuple(rows), heading, "Rate of the orbital period")
+    yield Block(tuple(_conclusions(outcome)))
+
+
+def _conclusions(outcome: Outcome) -> Iterator[tuple[str, str]]:
+    if ratio := outcome.get(DECAY, "ratio"):
+        yield "measured/predicted", f"{as_text(ratio)}   {_tension(outcome)}".rstrip()
+    m_1, m_2 = (as_text(outcome[name, ""], with_unit=False) for name in ("mass_1", "mass_2"))
+    yield "masses", f"m_1 = {m_1}, m_2 = {m_2} Msun ({outcome.facts['masses_from']})"
+    if merger := outcome.get("merger_time"):
+        yield "time to merger", as_text(merger, time_unit(merger))
+
+
+def _tension(outcome: Outcome) -> str:
+    """Say by how many sigma the decay differs, in words that do not depend on its sign."""
+    tension = outcome.get(DECAY, "tension_sigma")
+    if tension is None or finite(tension.drawn.central) is None:
+        return ""
+    return f"({abs(tension.drawn.central):.1f} sigma from prediction)"
+
+
+def headline(outcome: Outcome) -> str:
+    """Return the ratio, or the prediction where nothing was measured."""
+    finding: Finding | None = outcome.get(DECAY, "ratio") or outcome.get(DECAY, "predicted_intrinsic")
+    return "no effect contributes to the orbital period's rate" if finding is None else as_text(finding)
+
+
+ANALYSIS = Analysis("decay", decay, report, blocks, headline)
+
+
+@click.command("decay")
+@click.argument("system", required=False, type=click.Path(path_type=Path))
+@analysis_options
+def command(system: Path | None, wishes: Wishes) -> None:
+    """Take the orbital decay of SYSTEM apart by effect.
+
+    Says what each effect adds to the rate of the orbital period, takes the apparent part off the measured rate,
+    compares the rest with theory, and gives the time to merger. Without masses in the file, the two bodies are
+    weighed by what was measured.
+    """
+    run_analysis(ANALYSIS, system, wishes)

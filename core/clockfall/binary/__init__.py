@@ -1,0 +1,1 @@
+"""Ground floor: what a binary is. Pure numbers; no plugin, no file, no printing."""

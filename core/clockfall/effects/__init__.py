@@ -1,0 +1,25 @@
+"""First floor: the seam between clockfall and its effects.
+
+This is all that an effect needs to import besides `clockfall.binary`:
+
+    from clockfall.effects import Card, Parameter, Predicted, Rate, Rates, Settings, hook
+"""
+
+from clockfall.effects.card import APPARENT, INTRINSIC, Card, OwnParameter, Parameter, Rate
+from clockfall.effects.contributions import Caution, ClosedFormTrack, Predicted, Rates, Settings
+from clockfall.effects.hooks import hook
+
+__all__ = [
+    "APPARENT",
+    "INTRINSIC",
+    "Card",
+    "Caution",
+    "ClosedFormTrack",
+    "OwnParameter",
+    "Parameter",
+    "Predicted",
+    "Rate",
+    "Rates",
+    "Settings",
+    "hook",
+]

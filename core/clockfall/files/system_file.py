@@ -1,0 +1,572 @@
+"""The system file: TOML in, a System out, or all of its faults at once. Described in DEVELOPERS.md."""
+
+from __future__ import annotations
+
+import difflib
+import hashlib
+import math
+import os
+import re
+import tomllib
+from collections.abc import Callable, Iterable, Mapping
+from dataclasses import dataclass
+from decimal import Decimal
+from importlib import resources
+from pathlib import Path
+from typing import Any, Final
+
+import numpy as np
+
+from clockfall.analysis.system import Correlation, System, Uncertain
+from clockfall.binary.constants import SECONDS_PER_DAY
+from clockfall.binary.epoch import Epoch
+from clockfall.binary.ranges import Range
+from clockfall.binary.state import FIELDS
+from clockfall.effects.card import Card
+from clockfall.effects.checks import rate_units
+from clockfall.errors import BadInput
+from clockfall.files.faults import BadFile, Fault
+from clockfall.files.quantity import NotAQuantity, Quantity, parse_quantity
+from clockfall.files.toml_lines import KeyPath, key_lines
+from clockfall.files.units import UnitFault, factor
+
+LARGEST_FILE: Final = 2**20
+"""Bytes; a system file is a page or two."""
+
+DEEPEST_BRACKETS: Final = 50
+"""A reader of TOML calls itself once for each bracket, and would run out of stack."""
+
+FIELD_TABLES: Final = ("orbit", "masses", "sky", "spin")
+TABLES: Final = ("system", *FIELD_TABLES, "measured", "apparent", "effects", "correlation")
+_SEXAGESIMAL: Final = re.compile(r"([+-]?)(\d{1,3}):(\d{1,2}):(\d{1,2}(?:\.\d*)?)(?:\((\d+)\))?")
+
+
+@dataclass(frozen=True, slots=True)
+class SystemFile:
+    """A system and the text that it came from.
+
+    Attributes
+    ----------
+    system : System
+        What is known.
+    text, sha256 : str
+        The whole file and its SHA-256.
+    path : str
+        Its name.
+    """
+
+    system: System
+    text: str
+    sha256: str
+    path: str
+
+
+def read_system(path: str | os.PathLike[str], cards: Iterable[Card]) -> SystemFile:
+    """Read a system file.
+
+    Parameters
+    ----------
+    cards : iterable of Card
+        Of the installed effects: they name the parameters that may be measured, and effects' own parameters.
+
+    Raises
+    ------
+    BadFile
+        With every fault of the file.
+    """
+    name = os.fspath(path)
+    return parse_system(_text(Path(name), name), cards, name=name)
+
+
+def demo_system(cards: Iterable[Card]) -> SystemFile:
+    """Return the invented binary that comes with clockfall."""
+    text = resources.files("clockfall.files").joinpath("demo.toml").read_text(encoding="utf-8")
+    return parse_system(text, cards, name="demo.toml")
+
+
+def parse_system(text: str, cards: Iterable[Card], *, name: str = "system") -> SystemFile:
+    """Read a system from text; see `read_system`."""
+    try:
+        if _deepest(text) > DEEPEST_BRACKETS:
+            raise _whole(name, "TOML", f"brackets nested more than {DEEPEST_BRACKETS} deep")
+        tables = tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        raise BadFile(name, [_not_toml(error, text)]) from error
+    except (RecursionError, ValueError, OverflowError) as error:  # an integer too long to read, for instance
+        raise _whole(name, "TOML", f"text that cannot be read ({str(error)[:80]})") from error
+    system = _Reader(tables, tuple(cards), key_lines(text)).system(name)
+    return SystemFile(system, text, hashlib.sha256(text.encode()).hexdigest(), name)
+
+
+def _whole(name: str, expected: str, found: str, hint: str = "") -> BadFile:
+    return BadFile(name, [Fault("", None, expected, found, hint)])
+
+
+def _text(path: Path, name: str) -> str:
+    """Return the text of a file after checks that nothing about it can harm or hang."""
+    expected = "a system file (TOML text)"
+    try:
+        if not path.exists():
+            near = difflib.get_close_matches(path.name, [p.name for p in path.parent.glob("*.toml")], n=1)
+            raise _whole(name, expected, "no such file", f"did you mean {near[0]}?" if near else "")
+        if not path.is_file():
+            raise _whole(name, expected, "a directory" if path.is_dir() else "something that is not a regular file")
+        size = path.stat().st_size
+        if size > LARGEST_FILE:
+            raise _whole(name, f"{expected} of at most {LARGEST_FILE} bytes", f"{size} bytes")
+        content = path.read_bytes()
+    except (OSError, ValueError) as error:
+        if isinstance(error, BadFile):
+            raise
+        raise _whole(name, expected, f"it cannot be read: {getattr(error, 'strerror', None) or error}") from error
+    if not content.strip():
+        raise _whole(name, expected, "an empty file")
+    try:
+        return content.decode("utf-8")
+    except UnicodeDecodeError as error:
+        line = content.count(b"\n", 0, error.start) + 1
+        kind = "an HDF5 file" if content.startswith(b"\x89HDF") else "bytes that are not UTF-8 text"
+        hint = "read a result with 'clockfall show'" if content.startswith(b"\x89HDF") else ""
+        raise BadFile(name, [Fault("", line, expected, kind, hint)]) from error
+
+
+def _deepest(text: str) -> int:
+    """Return how deep the brackets of a text are nested at most, strings included."""
+    depth = deepest = 0
+    for character in text:
+        if character in "[{":
+            depth += 1
+            deepest = max(deepest, depth)
+        elif character in "]}":
+            depth -= 1
+    return deepest
+
+
+def _not_toml(error: tomllib.TOMLDecodeError, text: str) -> Fault:
+    message = str(error)
+    place = re.search(r"\(at line (\d+), column \d+\)", message)
+    line = int(place[1]) if place else text.count("\n") + 1
+    said = re.sub(r"\s*\(at .*\)", "", message)
+    content = text.split("\n")[line - 1].strip() if line <= text.count("\n") + 1 else ""
+    bare = re.match(r"""[\w.-]+\s*=\s*[^"'\[{\s]""", content)
+    hint = "write quantities as text in quotes" if bare and "Invalid" in said else ""
+    return Fault("", line, "TOML", f"{content[:60]!r} ({said})", hint)
+
+
+class _Reader:
+    """Reads the tables of one file, gathering faults as it goes."""
+
+    def __init__(self, tables: dict[str, Any], cards: tuple[Card, ...], lines: Mapping[KeyPath, int]) -> None:
+        self.tables = tables
+        self.cards = {card.name: card for card in cards}
+        self.parameters = {p.name: p for card in cards for p in card.predicts}
+        self.lines = lines
+        self.faults: list[Fault] = []
+
+    def system(self, file: str) -> System:
+        """Return the system, or raise all faults."""
+        for name in self.tables:
+            if name not in TABLES:
+                self.fault((name,), f"a table: {', '.join(TABLES)}", f"{name!r}", self.misplaced(name, TABLES))
+        name = self.name()
+        fields, epoch, epoch_uncertainty = self.fields()
+        measured = self.values("measured", self.measured_unit)
+        apparent = self.values("apparent", self.apparent_unit)
+        settings = self.settings()
+        only, without = self.effect_list("only"), self.effect_list("without")
+        system = System(
+            name=name,
+            fields=fields,
+            periastron_epoch=epoch,
+            periastron_epoch_uncertainty=epoch_uncertainty,
+            measured=measured,
+            apparent=apparent,
+            settings=settings,
+            only=only,
+            without=without or (),
+        )
+        correlations = self.correlations(system)
+        if self.faults:
+            raise BadFile(file, self.faults)
+        return System(**{**{n: getattr(system, n) for n in System.__slots__}, "correlations": correlations})
+
+    # -- faults and places
+
+    def fault(self, path: KeyPath, expected: str, found: str, hint: str = "") -> None:
+        """Note a fault at a key path."""
+        table, key = (path[:-1], path[-1]) if len(path) > 1 else (path, "")
+        brackets = f"[{'.'.join(str(part) for part in table)}]" if table else ""
+        line = next((self.lines[path[:k]] for k in range(len(path), 0, -1) if path[:k] in self.lines), None)
+        self.faults.append(Fault(f"{brackets} {key}".strip(), line, expected, found, hint))
+
+    def misplaced(self, name: str, known: Iterable[str]) -> str:
+        """Return a hint for an unknown name: where it belongs, or the nearest right one."""
+        plain = name.replace("-", "_").lower()
+        if plain in FIELDS and plain not in known:
+            return f"{plain} belongs in [{FIELDS[plain].group}]"
+        if (plain in self.parameters or _rate_of(plain)) and plain not in known:
+            return f"{plain} belongs in [measured]"
+        names = [*known, *FIELDS, *self.parameters]
+        near = difflib.get_close_matches(plain, names, n=1) or difflib.get_close_matches(name, names, n=1)
+        if not near:
+            return ""
+        if near[0] in known:
+            return f"did you mean {near[0]}?"
+        return f"did you mean {near[0]}, which belongs in [{self.home(near[0])}]?"
+
+    def home(self, name: str) -> str:
+        """Return the table in which a known name belongs."""
+        return FIELDS[name].group if name in FIELDS else "measured"
+
+    def table(self, name: str) -> dict[str, Any]:
+        """Return a table of the file, empty where it is missing or no table."""
+        found = self.tables.get(name, {})
+        if isinstance(found, dict):
+            return found
+        self.fault((name,), f"a table, [{name}]", _kind(found))
+        return {}
+
+    # -- tables
+
+    def name(self) -> str:
+        """Return the system's name."""
+        table = self.table("system")
+        for key in table:
+            if key not in ("name", "notes"):
+                self.fault(("system", key), "a key of [system]: name, notes", key, self.misplaced(key, ("name", "notes")))
+        for key in ("name", "notes"):
+            if key in table and not isinstance(table[key], str):
+                self.fault(("system", key), "text in quotes", _kind(table[key]))
+        name = table.get("name")
+        if name is None:
+            self.fault(("system",), '[system] with name = "..."', "no name", "the name is printed beside every number")
+        return name if isinstance(name, str) else ""
+
+    def fields(self) -> tuple[dict[str, Uncertain], Epoch | None, Uncertain]:
+        """Return the state fields of all their tables, and the epoch apart."""
+        fields: dict[str, Uncertain] = {}
+        epoch, epoch_uncertainty = None, Uncertain(0.0)
+        for table in FIELD_TABLES:
+            known = [name for name, description in FIELDS.items() if description.group == table]
+            for key, value in self.table(table).items():
+                path = (table, key)
+                if key not in known:
+                    self.fault(path, f"a key of [{table}]: {', '.join(known)}", key, self.misplaced(key, known))
+                elif key == "periastron_epoch":
+                    epoch, epoch_uncertainty = self.epoch(path, value) or (None, epoch_uncertainty)
+                elif (found := self.field(path, value)) is not None:
+                    fields[key] = found
+        self.check_eccentricity(fields)
+        return fields, epoch, epoch_uncertainty
+
+    def field(self, path: KeyPath, value: Any) -> Uncertain | None:
+        """Return one state field in clockfall's unit."""
+        name = str(path[-1])
+        description = FIELDS[name]
+        if name in ("right_ascension", "declination") and isinstance(value, str):
+            match = _SEXAGESIMAL.fullmatch(value.strip())
+            if match:
+                return self.within(path, _angle(match, hours=name == "right_ascension"), description.within, "rad", value)
+        return self.quantity(path, value, description.unit, description.within)
+
+    def check_eccentricity(self, fields: dict[str, Uncertain]) -> None:
+        """Refuse e and 1 - e that contradict each other; where both are given, 1 - e counts."""
+        if "eccentricity" not in fields or "one_minus_eccentricity" not in fields:
+            return
+        e, rest = fields["eccentricity"].value, fields["one_minus_eccentricity"].value
+        if abs((1.0 - e) - rest) > 2.0 * np.spacing(1.0):
+            path = ("orbit", "one_minus_eccentricity")
+            self.fault(path, f"1 - eccentricity, {1.0 - e:.6g}", f"{rest:.6g}", "give one of the two")
+        del fields["eccentricity"]
+
+    def epoch(self, path: KeyPath, value: Any) -> tuple[Epoch, Uncertain] | None:
+        """Return an instant, exactly as written, and its uncertainty [s]."""
+        expected = 'an MJD (TDB) as text, such as "57241.118205(2)"'
+        if not isinstance(value, str):
+            hint = f'a bare number loses digits; write "{value}"' if isinstance(value, int | float) else ""
+            self.fault(path, expected, _kind(value), hint)
+            return None
+        found = self.parsed(path, value, expected)
+        if found is None:
+            return None
+        if found.unit not in ("", "MJD"):
+            self.fault(path, expected, f"the unit {found.unit!r}", "epochs are modified Julian dates, without a unit")
+            return None
+        if abs(found.value) > 10**7:
+            hint = "subtract 2400000.5 from a Julian date" if 2.4e6 < found.value < 2.6e6 else ""
+            self.fault(path, expected, f"{value!r}, which is {float(found.value) / 365.25:.0f} years", hint)
+            return None
+        if Decimal(2400000) < found.value < Decimal(2600000):
+            self.fault(path, expected, f"{value!r}", "this looks like a Julian date; subtract 2400000.5")
+            return None
+        plus, minus = (float(side) * SECONDS_PER_DAY for side in (found.plus, found.minus))
+        return Epoch.from_decimal(found.value), Uncertain(0.0, plus, minus)
+
+    def values(self, table: str, unit_of: Callable[[str], str | None]) -> dict[str, Uncertain]:
+        """Return the quantities of [measured] or [apparent]."""
+        found: dict[str, Uncertain] = {}
+        for key, value in self.table(table).items():
+            unit = unit_of(key)
+            if unit is None:
+                rates = [f"{name}_rate" for name in FIELDS if name != "periastron_epoch"]
+                known = rates if table == "apparent" else [*rates, *self.parameters]
+                expected = "<field>_rate" if table == "apparent" else "<field>_rate or a parameter that an effect predicts"
+                self.fault((table, key), expected, key, self.misplaced(key, known))
+            elif (quantity := self.quantity((table, key), value, unit)) is not None:
+                found[key] = quantity
+        return found
+
+    def measured_unit(self, key: str) -> str | None:
+        """Return the unit of something measured, or None where it is nothing known."""
+        return self.parameters[key].unit if key in self.parameters else self.apparent_unit(key)
+
+    def apparent_unit(self, key: str) -> str | None:
+        """Return the unit of a rate, or None where it is none."""
+        field = _rate_of(key)
+        return rate_units(field)[0] if field else None
+
+    def settings(self) -> dict[str, dict[str, Uncertain]]:
+        """Return the own parameters of effects."""
+        found: dict[str, dict[str, Uncertain]] = {}
+        for name, table in self.table("effects").items():
+            if name in ("only", "without"):
+                continue
+            card = self.cards.get(name)
+            if card is None:
+                hint = difflib.get_close_matches(name.replace("_", "-"), [*self.cards, "only", "without"], n=1)
+                expected = f"an installed effect, only or without (effects: {', '.join(self.cards)})"
+                self.fault(("effects", name), expected, name, f"did you mean {hint[0]}?" if hint else "")
+            elif not isinstance(table, dict):
+                self.fault(("effects", name), f"a table, [effects.{name}]", _kind(table))
+            else:
+                found[name] = self.own_parameters(card, table)
+        return found
+
+    def own_parameters(self, card: Card, table: dict[str, Any]) -> dict[str, Uncertain]:
+        """Return one effect's own parameters, each in its declared unit."""
+        found = {}
+        for key, value in table.items():
+            own = card.own(key)
+            path = ("effects", card.name, key)
+            if own is None:
+                known = [parameter.name for parameter in card.parameters]
+                expected = f"a parameter of {card.name}: {', '.join(known) or 'it has none'}"
+                near = difflib.get_close_matches(key.replace("-", "_"), known, n=1)
+                self.fault(path, expected, key, f"did you mean {near[0]}?" if near else "")
+            elif (quantity := self.quantity(path, value, own.unit, own.within)) is not None:
+                found[key] = quantity
+        return found
+
+    def effect_list(self, key: str) -> tuple[str, ...] | None:
+        """Return [effects] only or without."""
+        names = self.table("effects").get(key)
+        if names is None:
+            return None
+        if not isinstance(names, list) or not all(isinstance(name, str) for name in names):
+            self.fault(("effects", key), 'a list of effects, such as ["shapiro-delay"]', _kind(names))
+            return None
+        for name in names:
+            if name not in self.cards:
+                near = difflib.get_close_matches(name.replace("_", "-"), self.cards, n=1)
+                self.fault(("effects", key), "an installed effect", name, f"did you mean {near[0]}?" if near else "")
+        return tuple(names)
+
+    # -- correlations
+
+    def correlations(self, system: System) -> tuple[Correlation, ...]:
+        """Return the correlations, each between two uncertain quantities."""
+        entries = self.tables.get("correlation", [])
+        if not isinstance(entries, list) or not all(isinstance(entry, dict) for entry in entries):
+            self.fault(("correlation",), "[[correlation]] with between and value", _kind(entries), "use double brackets")
+            return ()
+        addresses = _addresses(system)
+        seen: dict[frozenset[tuple[str, ...]], int] = {}
+        found = []
+        for number, entry in enumerate(entries):
+            correlation = self.correlation(number, entry, addresses, dict(system.quantities()))
+            if correlation is None:
+                continue
+            pair = frozenset((correlation.first, correlation.second))
+            if pair in seen:
+                self.fault(("correlation", number), "each pair once", f"the pair of [[correlation]] {seen[pair] + 1} again")
+            seen[pair] = number
+            found.append(correlation)
+        self.check_matrix(found)
+        return tuple(found)
+
+    def correlation(
+        self,
+        number: int,
+        entry: dict[str, Any],
+        addresses: Mapping[str, list[tuple[str, ...]]],
+        quantities: Mapping[tuple[str, ...], Uncertain],
+    ) -> Correlation | None:
+        """Return one correlation, or note what is wrong with it."""
+        place: KeyPath = ("correlation", number)
+        before = len(self.faults)
+        for key in entry:
+            if key not in ("between", "value"):
+                self.fault((*place, key), "between or value", key)
+        between, value = entry.get("between"), entry.get("value")
+        if not (isinstance(between, list) and len(between) == 2 and all(isinstance(b, str) for b in between)):
+            self.fault((*place, "between"), 'two keys, such as ["mass_1", "mass_2"]', _kind(between))
+            return None
+        if isinstance(value, bool) or not isinstance(value, int | float) or not -1.0 <= value <= 1.0:
+            self.fault((*place, "value"), "a number from -1 to 1", _kind(value))
+        paths = [self.address((*place, "between"), name, addresses, quantities) for name in between]
+        if len(self.faults) > before or paths[0] is None or paths[1] is None:
+            return None
+        if paths[0] == paths[1]:
+            self.fault((*place, "between"), "two different keys", between[0])
+            return None
+        return Correlation(paths[0], paths[1], float(value))  # type: ignore[arg-type]  # checked to be a number above
+
+    def address(
+        self,
+        place: KeyPath,
+        name: str,
+        addresses: Mapping[str, list[tuple[str, ...]]],
+        quantities: Mapping[tuple[str, ...], Uncertain],
+    ) -> tuple[str, ...] | None:
+        """Return the path of the quantity that a correlation names."""
+        paths = addresses.get(name, [])
+        if not paths:
+            near = difflib.get_close_matches(name, addresses, n=1)
+            expected = "a quantity given in this file"
+            self.fault(place, expected, name, f"did you mean {near[0]}?" if near else "")
+            return None
+        if len(paths) > 1:
+            full = " or ".join(sorted(other for other, found in addresses.items() if found[0] in paths and "." in other))
+            self.fault(place, "one quantity", f"{name}, which is given {len(paths)} times", f"write {full}")
+            return None
+        if quantities[paths[0]].exact:
+            self.fault(place, "a quantity with an uncertainty", f"{name}, which is given as exact")
+            return None
+        return paths[0]
+
+    def check_matrix(self, correlations: list[Correlation]) -> None:
+        """Refuse correlations that no set of quantities can have together."""
+        paths = sorted({path for c in correlations for path in (c.first, c.second)})
+        matrix = np.eye(len(paths))
+        for c in correlations:
+            i, j = paths.index(c.first), paths.index(c.second)
+            matrix[i, j] = matrix[j, i] = c.value
+        if paths and np.linalg.eigvalsh(matrix)[0] < -1e-12 * len(paths):
+            names = ", ".join(path[-1] for path in paths)
+            found = f"correlations of {names} that contradict each other"
+            self.fault(("correlation",), "a positive semi-definite matrix", found, "check signs and values")
+
+    # -- quantities
+
+    def parsed(self, path: KeyPath, text: str, expected: str) -> Quantity | None:
+        """Return a quantity as written."""
+        try:
+            return parse_quantity(text)
+        except NotAQuantity as error:
+            self.fault(path, expected, repr(text[:80]), error.hint)
+            return None
+
+    def quantity(self, path: KeyPath, value: Any, unit: str, within: Range | None = None) -> Uncertain | None:
+        """Return a quantity in `unit`, inside its range."""
+        expected = "a quantity as text, such as " + _example(str(path[-1]), unit)
+        if isinstance(value, int | float) and not isinstance(value, bool):
+            if factor_or_none("", unit) is None:
+                self.fault(path, expected, f"the number {value} without a unit", f'write "{value} {_usual(unit)}"')
+                return None
+            found: Quantity | None = self.parsed(path, repr(value), expected)
+        elif isinstance(value, str):
+            found = self.parsed(path, value, expected)
+        else:
+            self.fault(path, expected, _kind(value))
+            return None
+        if found is None:
+            return None
+        try:
+            scale = factor(found.unit, unit)
+        except UnitFault as error:
+            self.fault(path, error.expected, error.found, error.hint or f"such as {_example(str(path[-1]), unit)}")
+            return None
+        numbers = [float(number) * scale for number in (found.value, found.plus, found.minus)]
+        if not all(math.isfinite(number) for number in numbers):
+            self.fault(path, expected, f"{value!r}, beyond the largest double")
+            return None
+        return self.within(path, Uncertain(*numbers), within, unit, value)
+
+    def within(
+        self, path: KeyPath, quantity: Uncertain, within: Range | None, unit: str, written: Any
+    ) -> Uncertain | None:
+        """Return the quantity if its value lies inside its range."""
+        if within is not None and not within.holds(quantity.value):
+            self.fault(path, within.text(str(path[-1]), unit), f"{written!r}")
+            return None
+        return quantity
+
+
+def factor_or_none(unit_from: str, unit_to: str) -> float | None:
+    """Return the factor between two units, or None where they do not fit."""
+    try:
+        return factor(unit_from, unit_to)
+    except BadInput:
+        return None
+
+
+def _rate_of(key: str) -> str:
+    """Return the field whose rate `key` names, or ""."""
+    field = key.removesuffix("_rate")
+    return field if field != key and field in FIELDS and field != "periastron_epoch" else ""
+
+
+def _usual(unit: str) -> str:
+    """Return the unit in which people write a quantity that is `unit` inside."""
+    usual = {"s": "s", "rad": "deg", "rad/s": "deg/yr", "Msun": "Msun", "ls": "s", "1/s": "1/yr", "Msun ls2": "g cm2"}
+    return usual.get(unit, unit)
+
+
+def _example(key: str, unit: str) -> str:
+    """Return an example of a quantity for a fault's message."""
+    examples = {
+        "orbital_period": '"0.3230(1) d"',
+        "distance": '"1.9(2) kpc"',
+        "eccentricity": '"0.617(1)"',
+        "orbital_period_rate": '"-2.40(1)e-12"',
+        "right_ascension": '"08:41:12.30"',
+        "declination": '"-17:02:44.1"',
+    }
+    return examples.get(key, f'"1.23(4) {_usual(unit)}"' if unit not in ("", "s/s") else '"1.23(4)"')
+
+
+def _kind(value: Any) -> str:
+    """Say what kind of TOML value something is."""
+    if isinstance(value, bool):
+        return f"the boolean {str(value).lower()}"
+    if value is None:
+        return "nothing"
+    if isinstance(value, dict):
+        return "a table"
+    if isinstance(value, list):
+        return "a list"
+    if isinstance(value, str):
+        return f"the text {value[:60]!r}"
+    if isinstance(value, int | float):
+        return f"the number {value}"
+    return f"a date or time, {value}"
+
+
+def _angle(match: re.Match[str], *, hours: bool) -> Uncertain:
+    """Return a sexagesimal angle [rad]; its uncertainty is in units of the last place of the seconds."""
+    sign, whole, minutes, seconds, digits = match.groups()
+    unit = math.pi / 12.0 if hours else math.pi / 180.0
+    value = (int(whole) + int(minutes) / 60.0 + float(seconds) / 3600.0) * unit
+    last = 10.0 ** -len(seconds.partition(".")[2])
+    spread = int(digits) * last / 3600.0 * unit if digits else 0.0
+    return Uncertain(-value if sign == "-" else value, spread, spread)
+
+
+def _addresses(system: System) -> dict[str, list[tuple[str, ...]]]:
+    """Return what a correlation may call each quantity: its key, and its key with the table before it."""
+    addresses: dict[str, list[tuple[str, ...]]] = {}
+    for path, _ in system.quantities():
+        head = {"fields": FIELDS[path[1]].group if path[0] == "fields" else "", "settings": "effects"}.get(path[0], path[0])
+        for name in (path[-1], ".".join((head, *path[1:]))):
+            addresses.setdefault(name, []).append(path)
+    return addresses

@@ -1,0 +1,175 @@
+"""Units, converted here and nowhere else, by astropy.
+
+Inside clockfall a quantity has one of few units, named by short strings: "s", "rad", "ls" (light-second), "Msun"
+(nominal solar mass), products and quotients of them, and "" for a pure number. c = 1, so a length may be given as a
+time and the other way round.
+"""
+
+from __future__ import annotations
+
+import difflib
+import math
+from functools import cache
+from typing import Any, Final
+
+from clockfall.binary.constants import (
+    ASTRONOMICAL_UNIT,
+    PARSEC,
+    SECONDS_PER_DAY,
+    SECONDS_PER_YEAR,
+    SOLAR_MASS,
+    SPEED_OF_LIGHT,
+)
+from clockfall.errors import BadInput
+
+COMMON: Final = (
+    *("s", "ms", "us", "ns", "min", "h", "d", "yr", "kyr", "Myr", "Gyr", "Hz"),
+    *("rad", "deg", "arcmin", "arcsec", "mas", "uas", "deg/yr", "mas/yr", "arcsec/yr"),
+    *("m", "km", "au", "ls", "Rsun", "pc", "kpc", "Mpc", "Msun", "kg", "g cm2", "kg m2", "s/s"),
+)
+"""Names that a hint may offer."""
+
+_CF: Final = {
+    "": "1",
+    "s/s": "1",
+    "ls": f"{SPEED_OF_LIGHT!r} m",
+    "Msun": f"{SOLAR_MASS!r} kg",
+    "Msun ls2": f"{SOLAR_MASS * SPEED_OF_LIGHT**2!r} kg m2",
+}
+
+
+class UnitFault(BadInput):
+    """A unit is missing, unknown, or of the wrong kind.
+
+    Attributes
+    ----------
+    expected, found, hint : str
+        What unit was wanted, what stood there, and what to do.
+    """
+
+    def __init__(self, expected: str, found: str, hint: str = "") -> None:
+        self.expected = expected
+        self.found = found
+        self.hint = hint
+        super().__init__(f"expected {expected}, found {found}" + (f" ({hint})" if hint else ""))
+
+
+@cache
+def factor(unit_from: str, unit_to: str) -> float:
+    """Return the number by which a value in `unit_from` is multiplied to be in `unit_to`.
+
+    Raises
+    ------
+    UnitFault
+        `unit_from` is missing where one is needed, unknown, or of another kind than `unit_to`.
+    """
+    if unit_from == unit_to:
+        return 1.0
+    target = _parse(unit_to)
+    if not unit_from:
+        if _is_pure(target):
+            return 1.0
+        raise UnitFault(f"a quantity with a unit, such as {_example(unit_to)}", "a number without a unit")
+    source = _parse(unit_from)
+    if _is_pure(target) and not _is_pure(source):
+        raise UnitFault("a number without a unit", f"the unit {unit_from!r}")
+    light = _light_seconds_and_seconds()
+    for candidate in (source, *(source * light**power for power in (1, -1, 2, -2))):
+        if candidate.is_equivalent(target):
+            return float(candidate.to(target))
+    raise UnitFault(f"a unit that converts to {unit_to!r}", f"the unit {unit_from!r}")
+
+
+def convert(value: float, unit_from: str, unit_to: str) -> float:
+    """Return `value` in another unit; raises UnitFault as `factor` does."""
+    return value * factor(unit_from, unit_to)
+
+
+def cf_units(unit: str) -> str:
+    """Return `unit` as the CF conventions write it, for a result file."""
+    if unit in _CF:
+        return _CF[unit]
+    numerator, _, denominator = unit.partition("/")
+    base = _CF.get(numerator, numerator)
+    return f"{base} {denominator}-1" if denominator else base
+
+
+def _example(unit: str) -> str:
+    shown = {"s": "'0.3 d'", "rad": "'112.4 deg'", "Msun": "'1.4 Msun'", "ls": "'2.3 s'", "rad/s": "'4.2 deg/yr'"}
+    return shown.get(unit, f"'1.0 {unit}'")
+
+
+@cache
+def _names() -> dict[str, Any]:
+    """Return clockfall's own units by name; they take the place of astropy's of the same name."""
+    from astropy import units as u  # half a second, so not before a unit is met
+
+    def unit(name: str, size: float, of: Any) -> Any:
+        return u.def_unit(name, size * of)
+
+    own = {
+        "d": unit("d", SECONDS_PER_DAY, u.s),
+        "yr": unit("yr", SECONDS_PER_YEAR, u.s),
+        "kyr": unit("kyr", 1e3 * SECONDS_PER_YEAR, u.s),
+        "Myr": unit("Myr", 1e6 * SECONDS_PER_YEAR, u.s),
+        "Gyr": unit("Gyr", 1e9 * SECONDS_PER_YEAR, u.s),
+        "deg": unit("deg", math.pi / 180.0, u.rad),
+        "arcmin": unit("arcmin", math.pi / 10800.0, u.rad),
+        "arcsec": unit("arcsec", math.pi / 648000.0, u.rad),
+        "mas": unit("mas", math.pi / 648e6, u.rad),
+        "uas": unit("uas", math.pi / 648e9, u.rad),
+        "ls": unit("ls", SPEED_OF_LIGHT, u.m),
+        "au": unit("au", ASTRONOMICAL_UNIT, u.m),
+        "pc": unit("pc", PARSEC, u.m),
+        "kpc": unit("kpc", 1e3 * PARSEC, u.m),
+        "Mpc": unit("Mpc", 1e6 * PARSEC, u.m),
+        "Rsun": unit("Rsun", 6.957e8, u.m),  # nominal, IAU 2015 Resolution B3, exact
+        "Msun": unit("Msun", SOLAR_MASS, u.kg),
+    }
+    return own
+
+
+@cache
+def _light_seconds_and_seconds() -> Any:
+    """Return the unit ls/s, which is 1 where c = 1."""
+    from astropy import units as u  # as above
+
+    return _names()["ls"] / u.s
+
+
+def _is_pure(unit: Any) -> bool:
+    from astropy import units as u  # as above
+
+    return bool(unit.is_equivalent(u.dimensionless_unscaled))
+
+
+@cache
+def _parse(text: str) -> Any:
+    """Read a unit: factors separated by blanks, "*" or ".", each with an optional power, over at most one "/"."""
+    from astropy import units as u  # as above
+
+    if not text or text == "1":
+        return u.dimensionless_unscaled
+    numerator, slash, denominator = text.partition("/")
+    if slash and (not denominator.strip() or "/" in denominator):
+        raise UnitFault("a unit such as 'deg/yr'", f"the unit {text!r}")
+    unit = _product(numerator, text)
+    return unit / _product(denominator, text) if slash else unit
+
+
+def _product(text: str, whole: str) -> Any:
+    from astropy import units as u  # as above
+
+    product = u.dimensionless_unscaled
+    for word in text.replace("*", " ").replace(".", " ").replace("^", "").split():
+        name = word.rstrip("-0123456789")
+        power = word[len(name) :] or "1"
+        if name == "" and power == "1":
+            continue
+        try:
+            product = product * (_names().get(name) or u.Unit(name)) ** int(power)
+        except (ValueError, TypeError, OverflowError) as error:
+            near = difflib.get_close_matches(name, COMMON, n=3)
+            hint = f"did you mean {' or '.join(near)}?" if near else "for instance d, deg/yr, kpc, Msun"
+            raise UnitFault("a known unit", f"the unit {whole!r}", hint) from error
+    return product

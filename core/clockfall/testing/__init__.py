@@ -1,0 +1,1 @@
+"""For writers of effects and of tests: hypothesis strategies that draw valid binaries. Needs hypothesis."""
