@@ -17,8 +17,8 @@ def describe() -> Card:
         summary="The pulsar's clock runs slow near periastron: redshift and time dilation, once an orbit.",
         formula="gamma = e n^(-1/3) T_sun^(2/3) M^(-4/3) m_2 (m_1 + 2 m_2)",
         sources=(
-            "Blandford & Teukolsky 1976, ApJ 205, 580 (equation number not given)",
-            "Damour & Deruelle 1986, Ann. Inst. H. Poincare A 44, 263 (equation number not given)",
+            "Blandford & Teukolsky 1976, ApJ 205, 580",
+            "Damour & Deruelle 1986, Ann. Inst. H. Poincare A 44, 263",
         ),
         order="leading order; the terms dropped are smaller by about beta^2",
         valid="beta^2 << 1",

@@ -17,8 +17,8 @@ def describe() -> Card:
         summary="The ellipse turns in its plane, as Mercury's does: general relativity, first order.",
         formula="omega rate = k n,  k = 3 beta^2/(1 - e^2),  beta = (T_sun M n)^(1/3)",
         sources=(
-            "Robertson 1938, Annals of Mathematics 39, 101 (equation number not given)",
-            "Damour & Deruelle 1986, Ann. Inst. H. Poincare A 44, 263 (equation number not given)",
+            "Robertson 1938, Ann. Math. 39, 101",
+            "Damour & Deruelle 1986, Ann. Inst. H. Poincare A 44, 263",
         ),
         order="1PN; the terms dropped are smaller by about beta^2/(1 - e^2) (2PN) and by the bodies' spins",
         valid="beta^2/(1 - e^2) << 1; two point masses",

@@ -25,10 +25,10 @@ def describe() -> Card:
             "e rate = -(304/15) (T_sun n)^(5/3) n m_1 m_2 M^(-1/3) e (1 + 121/304 e^2) (1 - e^2)^(-5/2)"
         ),
         sources=(
-            "Peters & Mathews 1963, Phys. Rev. 131, 435, eqs. (16-17) (equation numbers from memory)",
-            "Peters 1964, Phys. Rev. 136, B1224, eqs. (5.6-5.7, 5.11, 5.14) (equation numbers from memory)",
+            "Peters & Mathews 1963, Phys. Rev. 131, 435, eqs. (16-17), numbers from memory",
+            "Peters 1964, Phys. Rev. 136, B1224, eqs. (5.6-5.7, 5.11, 5.14), numbers from memory",
         ),
-        order="leading order (2.5PN in the motion); the terms dropped are smaller by about 4 beta^2/(1 - e^2)",
+        order="leading order (2.5PN in the motion); what is dropped is smaller by (3 + 7 e^2) beta^2/(1 - e^2) or so",
         valid="beta^2/(1 - e^2) << 1, and decay slow against the orbit; two point masses in vacuum",
         needs=("mass_1", "mass_2", "orbital_period", "eccentricity"),
         gives=(Rate("orbital_period"), Rate("eccentricity")),
@@ -140,7 +140,9 @@ def closed_form_track(state: BinaryState, times: FloatArray) -> ClosedFormTrack:
     s_2_then = np.where(circular, 1.0, 1.0 / (1.0 + q))
     e_then = np.where(circular, 0.0 * remaining, np.sqrt(q / (1.0 + q)))
     before, after = (x**3 * np.sqrt(x) * shape_factor(x) for x in (s_2, s_2_then))
-    period = P_0 * (remaining * before / after) ** 0.375  # a^4 is the remaining time over s^7 S, and P_b goes as a^(3/2)
+    period = (
+        P_0 * (remaining * before / after) ** 0.375
+    )  # a^4 is the remaining time over s^7 S, and P_b goes as a^(3/2)
     return ClosedFormTrack(period, e_then, T)
 
 
@@ -171,12 +173,12 @@ _NEWTON_STEPS: Final = 7
 @hook
 def cautions(state: BinaryState) -> tuple[Caution, ...]:
     """Say how large the next order is, and where the orbit is too tight for this formula to mean much."""
-    beta, s_2, a, M, rest = state.known(
-        "orbital_velocity", "one_minus_e_squared", "relative_semi_major_axis", "total_mass", "one_minus_eccentricity"
-    )
+    beta, e, s_2 = state.known("orbital_velocity", "eccentricity", "one_minus_e_squared")
+    a, M, rest = state.known("relative_semi_major_axis", "total_mass", "one_minus_eccentricity")
     said = []
-    # For a circular orbit of equal masses the next order is (1273 - 924/4)/336 = 3.1 beta^2 (Blanchet & Schaefer 1989).
-    dropped = float(np.max(4.0 * beta**2 / s_2))
+    # A straight line in e^2 between the next order's ends for equal masses, 3.1 at e = 0 and 9.3 at e = 1 (Blanchet &
+    # Schaefer 1989, MNRAS 239, 845).
+    dropped = float(np.max((3.0 + 7.0 * e**2) * beta**2 / s_2))
     if dropped > 1e-6:
         said.append(Caution(f"leading order only: the decay is good to about {dropped:.0e} of itself"))
     closest = float(np.min(a * rest / (T_SUN * M)))

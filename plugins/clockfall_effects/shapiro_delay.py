@@ -20,8 +20,8 @@ def describe() -> Card:
             "ratio = s/(1 + abs(cos i)),  amplitude = r ratio^3"
         ),
         sources=(
-            "Damour & Deruelle 1986, Ann. Inst. H. Poincare A 44, 263 (equation number not given)",
-            "Freire & Wex 2010, MNRAS 409, 199 (orthometric form; equation number not given)",
+            "Damour & Deruelle 1986, Ann. Inst. H. Poincare A 44, 263",
+            "Freire & Wex 2010, MNRAS 409, 199 (orthometric form)",
         ),
         order="leading order; s by the Newtonian mass function, whose 1PN correction is about 3 beta^2 of itself",
         valid="beta^2 << 1; the line of sight passes the companion far outside its Schwarzschild radius",

@@ -21,7 +21,7 @@ HULSE_TAYLOR = PUBLISHED / "psr-b1913+16.toml"
 
 @pytest.fixture
 def result(clockfall: Command, tmp_path: Path) -> Path:
-    """A result of the main job."""
+    """Return a result of the main job."""
     path = tmp_path / "decay.h5"
     assert clockfall("decay", HULSE_TAYLOR, "--out", path, "--draws", 256).code == 0
     return path
@@ -72,7 +72,7 @@ def test_rerun_notices_a_changed_number(clockfall: Command, result: Path) -> Non
 
 
 def test_xarray_reads_it(result: Path) -> None:
-    """xarray opens the file as it is: dimensions, units, draws whose median is the central value."""
+    """The file opens in xarray as it is: dimensions, units, draws whose median is the central value."""
     with xr.open_dataset(result, engine="h5netcdf") as dataset:
         rate = dataset["orbital_period_rate_by_quadrupole_decay"]
         assert rate.dims == ("draw",)

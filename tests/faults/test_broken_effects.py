@@ -285,7 +285,7 @@ def test_idle_effects_say_why() -> None:
 
 
 def test_own_parameters_arrive_broadcast_and_locked() -> None:
-    """Own parameters come by default or as given, in the batch's shape, read-only; wrong names and values are refused."""
+    """Own parameters come by default or as given, of the batch's shape, read-only; wrong names are refused."""
     seen: list[Any] = []
 
     def rates(settings: Any) -> Rates:

@@ -135,7 +135,7 @@ def test_derived_quantities_agree_with_each_other(state: BinaryState) -> None:
 
 @given(binaries(), st.floats(0.05, 1.0))
 def test_sine_of_inclination_inverts_the_mass_function(state: BinaryState, sin_i: float) -> None:
-    """x = a (m_2/M) sin i gives sin i back."""
+    """Projecting a (m_2/M) by sin i to x gives sin i back."""
     a, m_2, M = state.known("relative_semi_major_axis", "mass_2", "total_mass")
     projected = state.replace(projected_semi_major_axis=a * m_2 / M * sin_i)
     assert projected.known("sin_inclination")[0] == pytest.approx(sin_i, rel=4 * ROUNDING)

@@ -45,9 +45,7 @@ def budget(of: Study, rate: str) -> list[Finding]:
     prediction = of.predicted.get(rate)
     if prediction is None:
         return []
-    contributions = [of.contribution(part) for part in prediction.contributions]
-    if rate in of.sample.apparent:
-        contributions.append(_given_apparent(of, prediction))
+    parts = contributions(of, prediction)
 
     def total(role: str, values: FloatArray, meaning: str) -> Finding:
         return of.finding(rate, role, values, prediction.unit, prediction.shown_in, meaning)
@@ -57,7 +55,7 @@ def budget(of: Study, rate: str) -> list[Finding]:
         total("apparent", prediction.apparent, "sum of the apparent contributions"),
     ]
     if rate not in of.sample.measured:
-        return [*contributions, *sums]
+        return [*parts, *sums]
     measured = total("measured", of.sample.measured[rate], "as measured")
     compared = comparison(of, prediction)
     renamed = {"observed": "intrinsic_observed"}
@@ -66,7 +64,15 @@ def budget(of: Study, rate: str) -> list[Finding]:
         for f in compared
         if f.role != "predicted"
     ]
-    return [*contributions, *sums, measured, *kept]
+    return [*parts, *sums, measured, *kept]
+
+
+def contributions(of: Study, prediction: Prediction) -> list[Finding]:
+    """Return what each effect contributes to a rate, and what the system file gives for the apparent part."""
+    by_effects = [of.contribution(part) for part in prediction.contributions]
+    if prediction.name not in of.sample.apparent:
+        return by_effects
+    return [*by_effects, _given_apparent(of, prediction)]
 
 
 def _given_apparent(of: Study, prediction: Prediction) -> Finding:

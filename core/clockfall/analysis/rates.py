@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import replace
 
+from clockfall.analysis.budget import contributions
 from clockfall.analysis.outcome import Finding, Outcome
 from clockfall.analysis.study import Choices, Prediction, Study
 from clockfall.analysis.system import System
@@ -41,7 +42,7 @@ def _lines(of: Study, prediction: Prediction) -> list[Finding]:
     if is_parameter and card is not None:
         lines = [replace(total, effect=card.name, nature=card.nature, sources=card.sources)]
     else:
-        lines += [of.contribution(part) for part in prediction.contributions]
+        lines += contributions(of, prediction)
     if name in of.sample.measured:
         lines.append(of.finding(name, "measured", of.sample.measured[name], unit, shown_in, "as measured"))
     return lines

@@ -65,7 +65,9 @@ _SUMS = (
 def blocks(outcome: Outcome) -> Iterator[Block]:
     """Yield the budget, and what follows from it."""
     contributions = outcome.contributions(DECAY)
-    sums = [(label, nature, f) for role, label, nature in _SUMS if (f := outcome.get(DECAY, role))]
+    has_apparent = any(f.nature == "apparent" for f in contributions)
+    kept = [row for row in _SUMS if has_apparent or row[0] in ("predicted_intrinsic", "measured")]
+    sums = [(label, nature, f) for role, label, nature in kept if (f := outcome.get(DECAY, role))]
     if sums:
         power = common_power(f for _, _, f in sums)
         shown = [*contributions, *(f for _, _, f in sums)]

@@ -12,7 +12,7 @@ import numpy as np
 from clockfall.analysis.inspiral import STAGES, inspiral
 from clockfall.analysis.outcome import Finding, Outcome
 from clockfall.app.analyses import Analysis, Block
-from clockfall.app.numbers import aligned, as_json, as_text, time_unit
+from clockfall.app.numbers import as_json, as_text, time_unit
 from clockfall.app.options import Wishes, analysis_options, run_analysis
 from clockfall.binary.constants import T_SUN
 from clockfall.effects.card import Card
@@ -54,8 +54,9 @@ def _stages(outcome: Outcome) -> Iterator[tuple[float, dict[str, Finding]]]:
 def blocks(outcome: Outcome) -> Iterator[Block]:
     """Yield the numbers, and the stages on the way."""
     found = [finding for name in _NUMBERS if (finding := outcome.get(name))]
-    texts = [as_text(f, time_unit(f) if f.quantity == "merger_time" else "") for f in found]
-    rows = tuple((f.quantity, text, f.meaning) for f, text in zip(found, aligned(texts), strict=True))
+    rows = tuple(
+        (f.quantity, as_text(f, time_unit(f) if f.quantity == "merger_time" else ""), f.meaning) for f in found
+    )
     yield Block(rows, ("quantity", "value", "meaning"))
     stages = list(_stages(outcome))
     if stages:

@@ -33,13 +33,15 @@ def print_outcome(analysis: Analysis, outcome: Outcome, *, as_json: bool, quiet:
 
 def print_blocks(title: str, blocks: Iterable[Block]) -> None:
     """Print a title and the blocks under it."""
-    console = Console(file=sys.stdout, highlight=False, markup=False, emoji=False, soft_wrap=False)
-    console.print(Text(title, style="bold"))
-    for block in blocks:
-        console.print()
-        if block.title:
-            console.print(Text(block.title, style="bold"))
-        console.print(_table(block))
+    console = Console(file=sys.stdout, highlight=False, markup=False, emoji=False)
+    with console.capture() as capture:
+        console.print(Text(title, style="bold"))
+        for block in blocks:
+            console.print()
+            if block.title:
+                console.print(Text(block.title, style="bold"))
+            console.print(_table(block))
+    click.echo("\n".join(line.rstrip() for line in capture.get().rstrip().split("\n")))
 
 
 def _table(block: Block) -> Table:

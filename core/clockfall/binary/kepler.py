@@ -534,20 +534,21 @@ def _residual(M: FloatArray, e: Lanes, o: Lanes, E: FloatArray, lag: FloatArray,
     """Put f = (1 - e) E + lag - M into the first row, where lag = e (E - sin E) and E has 17 bits.
 
     1 - e is used as high + low, where high has 17 bits, so that high E has no rounding; low has in it what 1 - e
-    itself lost when it was formed from e.
+    itself lost when it was formed from e. M is first taken off the larger of high E and lag, which is at least about
+    M/2, so that neither this difference nor the sum with the smaller one is rounded.
     """
-    high, low, work = rows
-    _shorten(o, high, work)
+    f, low, high = rows
+    _shorten(o, high, low)
     np.subtract(1.0, o, out=low)
     low -= e
-    np.subtract(o, high, out=work)
-    low += work
-
-    f = high
-    f *= E
-    f -= M
+    np.subtract(o, high, out=f)
+    low += f
     low *= E
-    low += lag
+    high *= E
+    np.maximum(high, lag, out=f)
+    np.minimum(high, lag, out=high)
+    f -= M
+    f += high
     f += low
 
 

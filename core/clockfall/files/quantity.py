@@ -52,9 +52,7 @@ class NotAQuantity(BadInput):
         self.text = text
         self.hint = hint
         shown = text if len(text) <= 60 else f"{text[:57]}..."
-        super().__init__(
-            f"expected a quantity such as '1.234(5) d', found {shown!r}" + (f" ({hint})" if hint else "")
-        )
+        super().__init__(f"expected a quantity such as '1.234(5) d', found {shown!r}" + (f" ({hint})" if hint else ""))
 
 
 @dataclass(frozen=True, slots=True)

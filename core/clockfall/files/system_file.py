@@ -233,7 +233,9 @@ class _Reader:
         table = self.table("system")
         for key in table:
             if key not in ("name", "notes"):
-                self.fault(("system", key), "a key of [system]: name, notes", key, self.misplaced(key, ("name", "notes")))
+                self.fault(
+                    ("system", key), "a key of [system]: name, notes", key, self.misplaced(key, ("name", "notes"))
+                )
         for key in ("name", "notes"):
             if key in table and not isinstance(table[key], str):
                 self.fault(("system", key), "text in quotes", _kind(table[key]))
@@ -266,7 +268,9 @@ class _Reader:
         if name in ("right_ascension", "declination") and isinstance(value, str):
             match = _SEXAGESIMAL.fullmatch(value.strip())
             if match:
-                return self.within(path, _angle(match, hours=name == "right_ascension"), description.within, "rad", value)
+                return self.within(
+                    path, _angle(match, hours=name == "right_ascension"), description.within, "rad", value
+                )
         return self.quantity(path, value, description.unit, description.within)
 
     def check_eccentricity(self, fields: dict[str, Uncertain]) -> None:
@@ -310,7 +314,9 @@ class _Reader:
             if unit is None:
                 rates = [f"{name}_rate" for name in FIELDS if name != "periastron_epoch"]
                 known = rates if table == "apparent" else [*rates, *self.parameters]
-                expected = "<field>_rate" if table == "apparent" else "<field>_rate or a parameter that an effect predicts"
+                expected = (
+                    "<field>_rate" if table == "apparent" else "<field>_rate or a parameter that an effect predicts"
+                )
                 self.fault((table, key), expected, key, self.misplaced(key, known))
             elif (quantity := self.quantity((table, key), value, unit)) is not None:
                 found[key] = quantity
@@ -377,7 +383,9 @@ class _Reader:
         """Return the correlations, each between two uncertain quantities."""
         entries = self.tables.get("correlation", [])
         if not isinstance(entries, list) or not all(isinstance(entry, dict) for entry in entries):
-            self.fault(("correlation",), "[[correlation]] with between and value", _kind(entries), "use double brackets")
+            self.fault(
+                ("correlation",), "[[correlation]] with between and value", _kind(entries), "use double brackets"
+            )
             return ()
         addresses = _addresses(system)
         seen: dict[frozenset[tuple[str, ...]], int] = {}
@@ -388,7 +396,9 @@ class _Reader:
                 continue
             pair = frozenset((correlation.first, correlation.second))
             if pair in seen:
-                self.fault(("correlation", number), "each pair once", f"the pair of [[correlation]] {seen[pair] + 1} again")
+                self.fault(
+                    ("correlation", number), "each pair once", f"the pair of [[correlation]] {seen[pair] + 1} again"
+                )
             seen[pair] = number
             found.append(correlation)
         self.check_matrix(found)
@@ -436,7 +446,9 @@ class _Reader:
             self.fault(place, expected, name, f"did you mean {near[0]}?" if near else "")
             return None
         if len(paths) > 1:
-            full = " or ".join(sorted(other for other, found in addresses.items() if found[0] in paths and "." in other))
+            full = " or ".join(
+                sorted(other for other, found in addresses.items() if found[0] in paths and "." in other)
+            )
             self.fault(place, "one quantity", f"{name}, which is given {len(paths)} times", f"write {full}")
             return None
         if quantities[paths[0]].exact:
@@ -566,7 +578,9 @@ def _addresses(system: System) -> dict[str, list[tuple[str, ...]]]:
     """Return what a correlation may call each quantity: its key, and its key with the table before it."""
     addresses: dict[str, list[tuple[str, ...]]] = {}
     for path, _ in system.quantities():
-        head = {"fields": FIELDS[path[1]].group if path[0] == "fields" else "", "settings": "effects"}.get(path[0], path[0])
+        head = {"fields": FIELDS[path[1]].group if path[0] == "fields" else "", "settings": "effects"}.get(
+            path[0], path[0]
+        )
         for name in (path[-1], ".".join((head, *path[1:]))):
             addresses.setdefault(name, []).append(path)
     return addresses

@@ -107,7 +107,7 @@ def _names() -> dict[str, Any]:
     def unit(name: str, size: float, of: Any) -> Any:
         return u.def_unit(name, size * of)
 
-    own = {
+    return {
         "d": unit("d", SECONDS_PER_DAY, u.s),
         "yr": unit("yr", SECONDS_PER_YEAR, u.s),
         "kyr": unit("kyr", 1e3 * SECONDS_PER_YEAR, u.s),
@@ -126,7 +126,6 @@ def _names() -> dict[str, Any]:
         "Rsun": unit("Rsun", 6.957e8, u.m),  # nominal, IAU 2015 Resolution B3, exact
         "Msun": unit("Msun", SOLAR_MASS, u.kg),
     }
-    return own
 
 
 @cache

@@ -1,0 +1,190 @@
+"""The main job on real systems, against what their papers published. Sources: fixtures/published/expected.toml."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from decimal import Decimal
+from typing import TYPE_CHECKING
+
+import pytest
+
+from clockfall.analysis.outcome import Outcome
+from clockfall.binary.constants import SECONDS_PER_YEAR, SOLAR_MASS, SPEED_OF_LIGHT, T_SUN
+
+from .conftest import PUBLISHED, Analysed, Published
+
+if TYPE_CHECKING:
+    from clockfall.files.quantity import Quantity
+
+Named = Callable[[str], Analysed]
+DECAY = "orbital_period_rate"
+DEG_PER_YEAR = math.pi / 180.0 / SECONDS_PER_YEAR
+
+
+def central(outcome: Outcome, quantity: str, role: str = "") -> float:
+    """Return a finding's central value."""
+    return outcome[quantity, role].drawn.central
+
+
+def uncertainty(outcome: Outcome, quantity: str, role: str = "") -> float:
+    """Return a finding's uncertainty, which must be there."""
+    found = outcome[quantity, role].drawn.uncertainty
+    assert found is not None
+    return found
+
+
+def inside(value: float, published: Quantity, sigmas: float = 1.0) -> bool:
+    """Whether a value lies within the published error."""
+    difference = Decimal(value) - published.value
+    return -published.minus * Decimal(sigmas) <= difference <= published.plus * Decimal(sigmas)
+
+
+@pytest.fixture(scope="module")
+def decay(analysed: Named) -> Outcome:
+    """Return the budget of PSR B1913+16."""
+    return analysed("psr-b1913+16").decay()
+
+
+@pytest.fixture(scope="module")
+def rates(analysed: Named) -> Outcome:
+    """Return all rates and predictions of PSR J0737-3039A."""
+    return analysed("psr-j0737-3039a").rates()
+
+
+class TestHulseTaylor:
+    """PSR B1913+16, Weisberg & Huang 2016."""
+
+    SYSTEM = "PSR B1913+16"
+
+    def test_masses(self, decay: Outcome, published: Published) -> None:
+        """The masses weighed from the advance and the Einstein amplitude are the published ones, to more digits."""
+        for name, four_decimals in (("mass_1", 1.4379), ("mass_2", 1.3905)):
+            assert inside(central(decay, name), published(self.SYSTEM, name))
+            # what the published 1.438(1), 1.390(1) are before rounding
+            assert central(decay, name) == pytest.approx(four_decimals, abs=5e-5)
+            assert uncertainty(decay, name) == pytest.approx(float(published(self.SYSTEM, name).plus), rel=0.2)
+
+    def test_predicted_decay(self, decay: Outcome, published: Published) -> None:
+        """The quadrupole decay is the published prediction within its error, and to 2e-6 of itself."""
+        paper = published(self.SYSTEM, "predicted")
+        assert inside(central(decay, DECAY, "predicted_intrinsic"), paper)
+        assert central(decay, DECAY, "predicted_intrinsic") == pytest.approx(float(paper.value), rel=2e-6)
+
+    def test_its_uncertainty(self, decay: Outcome, published: Published) -> None:
+        """The prediction's own uncertainty is the published one within a factor 1.5."""
+        ratio = uncertainty(decay, DECAY, "predicted_intrinsic") / float(published(self.SYSTEM, "predicted").plus)
+        assert 1 / 1.5 < ratio < 1.5
+
+    def test_intrinsic_decay(self, decay: Outcome, published: Published) -> None:
+        """With the published Galactic and motion part off, the measured decay is -2.398(4)e-12."""
+        paper = published(self.SYSTEM, "intrinsic_observed")
+        assert central(decay, DECAY, "intrinsic_observed") == pytest.approx(
+            float(paper.value), abs=0.5e-15
+        )  # printed digits
+        assert uncertainty(decay, DECAY, "intrinsic_observed") == pytest.approx(float(paper.plus), rel=0.1)
+
+    def test_ratio(self, decay: Outcome, published: Published) -> None:
+        """The ratio of measured to predicted is 0.998 +/- 0.0017."""
+        paper = published(self.SYSTEM, "ratio")
+        assert central(decay, DECAY, "ratio") == pytest.approx(
+            float(paper.value), abs=3e-4
+        )  # rounding of their two parts
+        assert uncertainty(decay, DECAY, "ratio") == pytest.approx(0.0017, abs=1e-4)
+
+    def test_merger_time(self, decay: Outcome, published: Published) -> None:
+        """The time to merger is 300.6 Myr."""
+        years = float(published(self.SYSTEM, "merger_time").value) * 1e6
+        assert central(decay, "merger_time") / SECONDS_PER_YEAR == pytest.approx(years, abs=0.05e6)  # printed digits
+
+    def test_shapiro_parameters(self, analysed: Named) -> None:
+        """The masses predict range and shape within the published errors."""
+        weighed = analysed("psr-b1913+16").weigh()
+        for name in ("shapiro_range", "shapiro_shape"):
+            assert abs(central(weighed, name, "tension_sigma")) < 1.5, name
+
+
+class TestDoublePulsar:
+    """PSR J0737-3039A/B, Kramer et al. 2021, with its published masses."""
+
+    SYSTEM = "PSR J0737-3039A"
+
+    def test_quadrupole_decay(self, analysed: Named, published: Published) -> None:
+        """The quadrupole row of the published budget, to 1e-6."""
+        outcome = analysed("psr-j0737-3039a").decay()
+        found = {f.effect: f.drawn.central for f in outcome.contributions(DECAY)}
+        paper = float(published(self.SYSTEM, "quadrupole").value)
+        assert found["quadrupole-decay"] == pytest.approx(paper, rel=1e-6)
+
+    @pytest.mark.parametrize("name", ["einstein_delay_amplitude", "shapiro_range"])
+    def test_predicted_parameters(self, rates: Outcome, name: str) -> None:
+        """Einstein amplitude and range agree with what was measured, within the published errors."""
+        measured = rates[name, "measured"].drawn
+        assert measured.uncertainty is not None
+        assert abs(rates[name, "predicted"].drawn.central - measured.central) < measured.uncertainty
+
+    def test_first_order_advance(self, rates: Outcome) -> None:
+        """The 1PN advance alone is 16.89937 deg/yr: inside the error that the masses leave, short of 2PN and spin."""
+        found = {f.effect: f.drawn for f in rates.contributions("longitude_of_periastron_rate")}["periastron-advance"]
+        assert found.central / DEG_PER_YEAR == pytest.approx(16.89937, abs=5e-6)  # printed digits
+        assert found.uncertainty is not None
+        # 2PN (+4.4e-4 deg/yr) and spin-orbit (about -4.8e-4 deg/yr) nearly cancel in the sum, which stays inside
+        measured = rates["longitude_of_periastron_rate", "measured"].drawn.central
+        assert abs(found.central - measured) < found.uncertainty
+
+
+@pytest.mark.parametrize(
+    ("file", "system"), [("psr-j1738+0333", "PSR J1738+0333"), ("psr-j0348+0432", "PSR J0348+0432")]
+)
+def test_white_dwarf_systems(analysed: Named, published: Published, file: str, system: str) -> None:
+    """The predicted decay of two pulsars with white dwarfs lies inside the published error."""
+    outcome = analysed(file).decay()
+    assert inside(central(outcome, DECAY, "predicted_intrinsic"), published(system, "predicted"))
+
+
+def test_a_young_pulsar(analysed: Named, published: Published) -> None:
+    """PSR J1141-6545: measured over predicted is 1.04(6)."""
+    outcome = analysed("psr-j1141-6545").decay()
+    paper = published("PSR J1141-6545", "ratio")
+    assert inside(central(outcome, DECAY, "ratio"), paper)
+    assert uncertainty(outcome, DECAY, "ratio") == pytest.approx(float(paper.plus), rel=0.15)  # one printed digit
+
+
+def test_perihelion_of_mercury(analysed: Named, published: Published) -> None:
+    """The advance of Mercury's perihelion is 42.98 arcsec in a century."""
+    outcome = analysed("sun-mercury").rates()
+    rate = central(outcome, "longitude_of_periastron_rate", "total")
+    per_century = rate * 100.0 * SECONDS_PER_YEAR * 648000.0 / math.pi
+    assert published("Sun and Mercury", "advance").unit == "arcsec/century"
+    assert per_century == pytest.approx(
+        float(published("Sun and Mercury", "advance").value), abs=0.005
+    )  # printed digits
+
+
+def test_power_radiated_by_jupiter(analysed: Named, published: Published) -> None:
+    """Jupiter's orbit radiates 5.2 kW: the energy -G m_1 m_2/(2a) lost as the period shrinks.
+
+    d ln E = -(2/3) d ln P_b, so the power is (2/3)(G m_1 m_2/(2a)) abs(P_b rate)/P_b.
+    """
+    jupiter = analysed("sun-jupiter")
+    outcome = jupiter.decay()
+    fields = {name: value.value for name, value in jupiter.system.fields.items()}
+    M, P_b = fields["mass_1"] + fields["mass_2"], fields["orbital_period"]
+    a = (T_SUN * M * (P_b / (2 * math.pi)) ** 2) ** (1 / 3)  # light-seconds
+    energy = T_SUN * fields["mass_1"] * fields["mass_2"] / (2 * a) * SOLAR_MASS * SPEED_OF_LIGHT**2  # joules
+    power = 2 / 3 * energy * abs(central(outcome, DECAY, "predicted_intrinsic")) / P_b
+    assert published("Sun and Jupiter", "radiated_power").unit == "kW"
+    assert power / 1e3 == pytest.approx(float(published("Sun and Jupiter", "radiated_power").value), abs=0.05)  # digits
+
+
+def test_every_fixture_can_be_read() -> None:
+    """Every published system file is free of faults, and every value in it has a mark beside or above it."""
+    for path in sorted(PUBLISHED.glob("*.toml")):
+        if path.name == "expected.toml":
+            continue
+        Analysed(path.stem)
+        for line in path.read_text().splitlines():
+            is_value = "=" in line and not line.startswith(("#", "name", "between", "value"))
+            if is_value and path.name.startswith("psr-") and "#" not in line:
+                before = path.read_text().split(line)[0].rstrip().splitlines()[-1]
+                assert before.startswith("#"), f"{path.name}: {line}"
