@@ -25,8 +25,8 @@ def describe() -> Card:
             "e rate = -(304/15) (T_sun n)^(5/3) n m_1 m_2 M^(-1/3) e (1 + 121/304 e^2) (1 - e^2)^(-5/2)"
         ),
         sources=(
-            "Peters & Mathews 1963, Phys. Rev. 131, 435, eqs. (16-17), numbers from memory",
-            "Peters 1964, Phys. Rev. 136, B1224, eqs. (5.6-5.7, 5.11, 5.14), numbers from memory",
+            "Peters & Mathews 1963, Phys. Rev. 131, 435, eqs. (16-17; numbers from memory)",
+            "Peters 1964, Phys. Rev. 136, B1224, eqs. (5.6-5.7, 5.11, 5.14; numbers from memory)",
         ),
         order="leading order (2.5PN in the motion); what is dropped is smaller by (3 + 7 e^2) beta^2/(1 - e^2) or so",
         valid="beta^2/(1 - e^2) << 1, and decay slow against the orbit; two point masses in vacuum",

@@ -29,6 +29,7 @@ class Said:
     @property
     def json(self) -> Any:
         """Standard output read as JSON."""
+        assert self.code == 0, self.err
         return json.loads(self.out)
 
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import subprocess
 import sys
+from importlib import resources
 from pathlib import Path
 
 import pytest
@@ -123,7 +124,7 @@ def test_the_manuals_effect_works_as_printed(fresh_clockfall: Command, tmp_path:
         (folder / name).write_text(after.split(f"```{language}\n", 1)[1].split("```", 1)[0])
     setting = manual.split("[effects.thin-gas]", 1)[1].split("```", 1)[0]
     environment = install(folder, tmp_path / "site")
-    demo = (FIXTURES / "halden-7-ring.toml").read_text().split('[[correlation]]\nbetween = ["ring_mass"', 1)[0]
+    demo = resources.files("clockfall.files").joinpath("demo.toml").read_text()
     system = tmp_path / "halden.toml"
     system.write_text(f"{demo}\n[effects.thin-gas]{setting}")
     report = fresh_clockfall("decay", system, "--json", environment=environment).json

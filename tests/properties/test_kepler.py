@@ -181,11 +181,10 @@ def test_a_large_sample_stays_within_the_guarantee(pairs: Any) -> None:
 
 
 def test_the_check_of_large_samples_can_fail() -> None:
-    """The check sees an error of 3 ulp, and the rounding of the result alone, so that its silence means something."""
+    """The check sees an error of 3 ulp, so that its silence means something."""
     M, o = random_pairs(10_000, 4)
     E = eccentric_anomaly(M, 1.0 - o, one_minus_eccentricity=o)
     assert not within(2.0, M, E + 5.0 * np.spacing(np.abs(E)), o).any()  # 5 less the 2 that E itself may be off
-    assert 0.1 < np.mean(within(0.25, M, E, o)) < 0.9  # half of all numbers would be rounded by less than this
 
 
 @pytest.mark.parametrize("function", [mean_anomaly, true_anomaly, eccentric_anomaly_from_true])

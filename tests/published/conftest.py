@@ -30,7 +30,7 @@ def published() -> Published:
     def find(system: str, name: str) -> Quantity:
         entry = expected[system][name]
         assert entry["mark"] in ("seen", "transcription", "memory")
-        assert expected[system]["source"]
+        assert entry["source"]
         return parse_quantity(entry["value"])
 
     return find

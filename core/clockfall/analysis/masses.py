@@ -23,15 +23,17 @@ HEAVIEST: Final = 300.0
 
 _GRID: Final = 121
 _STEP: Final = 1e-6  # of ln m: the square root of rounding, within a factor of a hundred either way
-_ITERATIONS: Final = 50
+_ITERATIONS: Final = 40
 _HALVINGS: Final = 12
+_STILL: Final = 1e-14  # of ln m: rounding leaves some 1e-15 times the misfit's worst condition
 _SOLVED: Final = 1e-11  # relative misfit; rounding leaves some 1e-15
 
 
 def search_masses(misfit: Misfit) -> list[FloatArray]:
     """Return every solution for one binary, the one with the largest m_1 first.
 
-    Newton's method is started from each local minimum of the misfit on a logarithmic grid from 0.01 to 300 Msun.
+    Newton's method is started from each cell of a logarithmic grid from 0.01 to 300 Msun in which both misfits change
+    sign, or come to the edge of their meaning.
 
     Parameters
     ----------
@@ -43,21 +45,24 @@ def search_masses(misfit: Misfit) -> list[FloatArray]:
     list of arrays, shape (2,) [Msun]
         Empty where no masses fit.
     """
+    starts = _cells_with_sign_changes(misfit)
+    if not starts.size:
+        return []
+    found, solved = newton_masses(misfit, starts)
     solutions: list[FloatArray] = []
-    for start in _local_minima(misfit):
-        masses, solved = newton_masses(misfit, start[None, :])
-        if solved[0] and not any(np.allclose(masses[0], known, rtol=1e-6) for known in solutions):
-            solutions.append(masses[0])
+    for masses in found[solved]:
+        if not any(np.allclose(masses, known, rtol=1e-6) for known in solutions):
+            solutions.append(masses)
     return sorted(solutions, key=lambda pair: -float(pair[0]))
 
 
 def newton_masses(misfit: Misfit, start: FloatArray) -> tuple[FloatArray, BoolArray]:
-    """Solve from a start near the solution.
+    """Solve from starts near the solutions.
 
     Parameters
     ----------
     misfit : callable
-        For binaries of shape (n,).
+        For binaries of shape (n,), or for one, shape (1,), which is then solved from n starts.
     start : array, shape (n, 2) [Msun]
         First guesses.
 
@@ -69,14 +74,12 @@ def newton_masses(misfit: Misfit, start: FloatArray) -> tuple[FloatArray, BoolAr
         Where the misfit is below 1e-11.
     """
     logs = np.log(start)
-    size = np.inf
     for _ in range(_ITERATIONS):
         value, jacobian = _value_and_jacobian(misfit, logs)
-        step = _newton_step(value, jacobian)
-        logs = _damped(misfit, logs, step, _norm(value))
-        # one more round after the last step that rounding does not explain
-        previous, size = size, float(np.max(np.abs(step), initial=0.0))
-        if size < 1e-9 and previous < 1e-4:
+        before = logs
+        logs = _damped(misfit, logs, _newton_step(value, jacobian), _norm(value))
+        # a binary is done when rounding alone moves it, or when no step would better its misfit
+        if np.max(np.abs(logs - before), initial=0.0) < _STILL:
             break
     solved = _norm(misfit(np.exp(logs[:, 0]), np.exp(logs[:, 1]))) < _SOLVED
     return np.where(solved[:, None], np.exp(logs), np.nan), solved
@@ -124,14 +127,22 @@ def _damped(misfit: Misfit, logs: FloatArray, step: FloatArray, before: FloatArr
     return np.where(worse[:, None], logs, trial)
 
 
-def _local_minima(misfit: Misfit) -> list[FloatArray]:
-    """Return the masses at the local minima of the misfit over the grid; each shape (2,) [Msun]."""
+def _cells_with_sign_changes(misfit: Misfit) -> FloatArray:
+    """Return the middles of the grid's cells that may hold a solution; shape (cells, 2) [Msun]."""
     axis = np.geomspace(LIGHTEST, HEAVIEST, _GRID)
     m_1, m_2 = np.meshgrid(axis, axis, indexing="ij")
-    size = _norm(misfit(m_1[..., None], m_2[..., None])[..., 0, :])
-    walled = np.pad(size, 1, constant_values=np.inf)
-    lowest = np.isfinite(size)
-    for i in range(3):
-        for j in range(3):
-            lowest &= size <= walled[i : i + _GRID, j : j + _GRID]
-    return [np.array([m_1[at], m_2[at]]) for at in zip(*np.nonzero(lowest), strict=True)]
+    value = misfit(m_1[..., None], m_2[..., None])[..., 0, :]  # (grid, grid, 2)
+    corners = np.stack([value[:-1, :-1], value[1:, :-1], value[:-1, 1:], value[1:, 1:]])
+    meaning = np.isfinite(corners)
+    low = np.min(np.where(meaning, corners, np.inf), axis=0)
+    high = np.max(np.where(meaning, corners, -np.inf), axis=0)
+    at_the_edge = meaning.any(axis=0) & ~meaning.all(axis=0)
+    may_hold = (((low <= 0.0) & (high >= 0.0)) | at_the_edge).all(axis=-1)
+    middle = np.sqrt(axis[:-1] * axis[1:])
+    i, j = np.nonzero(may_hold)
+    # beyond an edge Newton has no value to start from: start at the corner of the cell that has one
+    starts = np.stack([middle[i], middle[j]], axis=-1)
+    for k, (di, dj) in enumerate(((0, 0), (1, 0), (0, 1), (1, 1))):
+        usable = at_the_edge.any(axis=-1)[i, j] & meaning[k].all(axis=-1)[i, j]
+        starts[usable] = np.stack([axis[i + di], axis[j + dj]], axis=-1)[usable]
+    return starts

@@ -16,6 +16,7 @@ from clockfall.app.numbers import (
     as_json,
     as_text,
     common_power,
+    effect_label,
     finite,
     time_unit,
     unit_heading,
@@ -57,7 +58,7 @@ def report(outcome: Outcome) -> dict[str, Any]:
 _SUMS = (
     ("predicted_intrinsic", "predicted", "intrinsic"),
     ("apparent", "apparent parts", "apparent"),
-    ("measured", "measured", "both"),
+    ("measured", "measured", "as seen"),
     ("intrinsic_observed", "measured, apparent off", "intrinsic"),
 )
 
@@ -72,7 +73,10 @@ def blocks(outcome: Outcome) -> Iterator[Block]:
         power = common_power(f for _, _, f in sums)
         shown = [*contributions, *(f for _, _, f in sums)]
         texts = aligned([as_text(f, power=power, with_unit=False) for f in shown])
-        labels = [*((f.effect, f.nature) for f in contributions), *((label, nature) for label, nature, _ in sums)]
+        labels = [
+            *((effect_label(f), f.nature) for f in contributions),
+            *((label, nature) for label, nature, _ in sums),
+        ]
         rows: list[tuple[str, ...]] = [(*label, text) for label, text in zip(labels, texts, strict=True)]
         rows.insert(len(contributions), ())
         heading = ("effect", "nature", unit_heading(sums[0][2].shown_in, power))

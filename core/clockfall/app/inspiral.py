@@ -118,7 +118,8 @@ def _reader(given: dict[str, str]) -> Callable[[Iterable[Card]], SystemFile]:
         values["orbital_period"] = _period(values)
         if "one_minus_eccentricity" not in values:
             values.setdefault("eccentricity", "0")
-        lines = ["[system]", 'name = "inspiral"', "[masses]"]
+        name = f"{values['mass_1']} and {values['mass_2']}"
+        lines = ["[system]", f"name = {_toml(name)}", "[masses]"]
         lines += [f"{name} = {_toml(values.pop(name))}" for name in ("mass_1", "mass_2")]
         lines += ["[orbit]", *(f"{name} = {_toml(value)}" for name, value in values.items())]
         return parse_system("\n".join(lines) + "\n", cards, name="the options")

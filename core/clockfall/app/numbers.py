@@ -13,6 +13,9 @@ from clockfall.files.units import factor
 TIME_UNITS: Final = ("Gyr", "Myr", "kyr", "yr", "d", "h", "min", "s")
 """Units in which people read a long time, the longest first."""
 
+EXACT_DIGITS: Final = 7
+"""Digits shown of a number without uncertainty; --json has them all."""
+
 
 def finite(number: float) -> float | None:
     """Return the number, or None where it has no meaning; JSON has no NaN."""
@@ -50,7 +53,7 @@ def as_text(finding: Finding, unit: str = "", power: int = 0, *, with_unit: bool
     value = finding.drawn.central * scale
     low, high = finding.drawn.interval or (finding.drawn.central, finding.drawn.central)
     plus, minus = max(high * scale - value, 0.0), max(value - low * scale, 0.0)
-    return format_quantity(value, plus, minus, unit if with_unit else "")
+    return format_quantity(value, plus, minus, unit if with_unit else "", digits=EXACT_DIGITS)
 
 
 def time_unit(finding: Finding) -> str:
@@ -80,6 +83,11 @@ def aligned(texts: Sequence[str]) -> list[str]:
 
     widest = max((before_point(text) for text in texts), default=0)
     return [" " * (widest - before_point(text)) + text for text in texts]
+
+
+def effect_label(finding: Finding) -> str:
+    """Return whose contribution a finding is, in words for a table."""
+    return "given in the file" if finding.effect == "given" else finding.effect
 
 
 def unit_heading(unit: str, power: int = 0) -> str:

@@ -11,7 +11,7 @@ import click
 from clockfall.analysis.outcome import Finding, Outcome
 from clockfall.analysis.rates import rates
 from clockfall.app.analyses import Analysis, Block
-from clockfall.app.numbers import aligned, as_json, as_text, common_power, unit_heading
+from clockfall.app.numbers import aligned, as_json, as_text, common_power, effect_label, unit_heading
 from clockfall.app.options import Wishes, analysis_options, run_analysis
 
 
@@ -55,7 +55,7 @@ def blocks(outcome: Outcome) -> Iterator[Block]:
     for total in _of_role(outcome, "total"):
         contributions = outcome.contributions(total.quantity)
         measured = outcome.get(total.quantity, "measured")
-        labelled = [(f.effect, f.nature, f) for f in contributions]
+        labelled = [(effect_label(f), f.nature, f) for f in contributions]
         labelled.append(("total", "", total))
         if measured:
             labelled.append(("measured", "", measured))
@@ -65,12 +65,16 @@ def blocks(outcome: Outcome) -> Iterator[Block]:
         yield Block(rows, ("effect", "nature", unit_heading(total.shown_in, power)), total.quantity)
     parameters = _of_role(outcome, "predicted")
     if parameters:
-        predicted = tuple(
-            (f.quantity, f.effect, as_text(f), as_text(m) if (m := outcome.get(f.quantity, "measured")) else "")
-            for f in parameters
-        )
-        yield Block(predicted, ("parameter", "effect", "predicted", "measured"), "Predicted parameters")
+        predicted = [row for f in parameters for row in _parameter_rows(outcome, f)]
+        yield Block(tuple(predicted), title="Predicted parameters")
     yield Block((("masses", outcome.facts["masses_from"]),))
+
+
+def _parameter_rows(outcome: Outcome, finding: Finding) -> Iterator[tuple[str, ...]]:
+    """Yield the prediction, and below it the effect and what was measured."""
+    measured = outcome.get(finding.quantity, "measured")
+    yield finding.quantity, "predicted", as_text(finding)
+    yield f"  by {finding.effect}", *(("measured", as_text(measured)) if measured else ())
 
 
 def headline(outcome: Outcome) -> str:

@@ -11,7 +11,7 @@ import click
 from clockfall.analysis.outcome import Finding, Outcome
 from clockfall.analysis.weigh import weigh
 from clockfall.app.analyses import Analysis, Block
-from clockfall.app.numbers import aligned, as_json, as_text, common_power, finite, unit_heading
+from clockfall.app.numbers import aligned, as_json, as_text, finite
 from clockfall.app.options import Wishes, analysis_options, run_analysis
 
 _MASSES = ("mass_1", "mass_2", "total_mass", "mass_ratio", "sin_inclination")
@@ -57,27 +57,21 @@ def blocks(outcome: Outcome) -> Iterator[Block]:
     rows = [(f.quantity, text, f.meaning) for f, text in zip(found, texts, strict=True)]
     correlation = _plain(outcome.get("mass_correlation"))
     if correlation is not None:
-        rows.append(("correlation", f"{correlation:.4f}", "of the two masses"))
+        rows.append(("correlation", f"{correlation:.6f}", "of the two masses"))
     yield Block(tuple(rows), title="Masses")
     tests = [row for name in _tested(outcome) for row in _test_rows(outcome, name)]
     if tests:
-        heading = ("parameter", "observed", "predicted", "ratio", "sigma")
-        yield Block(tuple(tests), heading, "Tests by what was measured besides (apparent parts taken off)")
+        yield Block(tuple(tests), title="Tests by what was measured besides (apparent parts taken off)")
 
 
-def _test_rows(outcome: Outcome, name: str) -> tuple[tuple[str, ...], ...]:
-    """Return two rows, since a name and four numbers do not fit in 80 columns."""
-    observed, predicted = outcome[name, "observed"], outcome[name, "predicted"]
+def _test_rows(outcome: Outcome, name: str) -> Iterator[tuple[str, ...]]:
+    """Yield three rows, since a name and four numbers do not fit in 80 columns."""
     ratio, tension = outcome.get(name, "ratio"), _plain(outcome.get(name, "tension_sigma"))
-    power = common_power([observed, predicted])
-    numbers = (
-        f"  {unit_heading(observed.shown_in, power)}",
-        as_text(observed, power=power, with_unit=False),
-        as_text(predicted, power=power, with_unit=False),
-        "" if ratio is None else as_text(ratio),
-        "" if tension is None else f"{tension:+.1f}",
-    )
-    return (name,), numbers
+    yield name, "observed", as_text(outcome[name, "observed"])
+    yield "", "predicted", as_text(outcome[name, "predicted"])
+    if ratio is not None:
+        sigma = "" if tension is None else f"   ({tension:+.1f} sigma)"
+        yield "", "ratio", f"{as_text(ratio)}{sigma}"
 
 
 def headline(outcome: Outcome) -> str:
