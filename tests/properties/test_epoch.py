@@ -26,7 +26,7 @@ fractions = st.floats(0.0, 1.0, exclude_max=True)
 any_fractions = st.floats(-1e5, 1e5)
 seconds = st.floats(-1e11, 1e11)
 epochs = st.builds(Epoch, days, fractions)
-examples = settings(max_examples=200, deadline=None)
+examples = settings(max_examples=80, deadline=None)
 
 
 def exact(pair: Epoch | OrbitCount) -> Fraction:
@@ -219,12 +219,12 @@ def test_orbits_are_counted_to_the_last_digit(start: Epoch, days_later: float, f
 def test_fifty_years_of_a_short_orbit() -> None:
     """Over 50 years at P = 0.1 d the phase is right to 1e-14 orbits, where doubles alone are off by 1e-11."""
     rng = np.random.default_rng(1)
-    start = Epoch(rng.integers(40_000, 42_000, 2000), rng.random(2000))
-    end = Epoch(start.day + 18_262, rng.random(2000))
-    period = 8640.0 * (1.0 + 1e-3 * rng.random(2000))
+    start = Epoch(rng.integers(40_000, 42_000, 500), rng.random(500))
+    end = Epoch(start.day + 18_262, rng.random(500))
+    period = 8640.0 * (1.0 + 1e-3 * rng.random(500))
     count = orbits_elapsed(start, end, period)
     errors, plain = [], []
-    for i in range(2000):
+    for i in range(500):
         a, b = Epoch(start.day[i], start.fraction[i]), Epoch(end.day[i], end.fraction[i])
         true = (exact(b) - exact(a)) * 86400 / Fraction(float(period[i]))
         errors.append(float(abs(exact(OrbitCount(count.whole[i], count.fraction[i])) - true)))

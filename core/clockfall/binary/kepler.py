@@ -30,8 +30,8 @@ __all__ = ["eccentric_anomaly", "eccentric_anomaly_from_true", "mean_anomaly", "
 Lanes: TypeAlias = FloatArray | float
 Rows: TypeAlias = Sequence[FloatArray]
 
-# Lanes worked on at a time: long enough to hide the cost of a call, short enough for the scratch to stay in cache.
-_BLOCK = 16384
+# Most lanes worked on at a time: many enough to hide the cost of a call, few enough for the scratch to stay in cache.
+_BLOCK = 25_000
 _SCRATCH_ROWS = 12
 # Doubles in a cache line.
 _LINE = 8
@@ -359,15 +359,21 @@ def _solve(M: FloatArray, form: _Eccentricity) -> FloatArray:
     if largest > _LARGEST_NEAR_ANOMALY:
         return _solve_far(M, form)
     E = _aligned(M.size)
-    row = -(-min(M.size, _BLOCK) // _LINE) * _LINE
+    blocks = _ceiling(M.size, _BLOCK)
+    lanes = _ceiling(M.size, blocks)  # equal blocks, as a short last one would cost as many calls as a full one
+    row = _ceiling(lanes, _LINE) * _LINE
     rows = _aligned(_SCRATCH_ROWS * row).reshape(_SCRATCH_ROWS, row)
     solve_block = _solve_first_turn if largest <= np.pi else _solve_any_turn
-    for start in range(0, M.size, _BLOCK):
-        part = slice(start, start + _BLOCK)
+    for start in range(0, M.size, lanes):
+        part = slice(start, start + lanes)
         other, *scratch = rows[:, : E[part].size]
         e, o = form.pair_of(part, other)
         solve_block(M[part], e, o, E[part], scratch)
     return E
+
+
+def _ceiling(number: int, unit: int) -> int:
+    return -(-number // unit)
 
 
 def _aligned(size: int) -> FloatArray:
@@ -504,8 +510,7 @@ def _correct(M: FloatArray, e: Lanes, o: Lanes, E: FloatArray, rows: Rows) -> No
     derivatives f1 = (1 - e) + e (1 - cos E), f2 = e sin E, f3 = e cos E, f4 = -f2, the step E - s is found from
     s = f / (f1 - f f2 / (2 f1)), then from s = f / (f1 - s f2/2 + s**2 f3/6), then from
     s = f / (f1 - s f2/2 + s**2 f3/6 + s**3 f2/24). An E good to 3e-4 of itself becomes good to 1e-17 of itself,
-    apart from rounding. E is shortened first, which makes its square, its cube and the leading part of f free of
-    rounding.
+    apart from rounding. E is shortened first, so that its square and its cube have no rounding.
     """
     square, lag, rise, f, s, work, *_ = rows
     _shorten(E, E, work)
@@ -541,25 +546,21 @@ def _shorten(values: Lanes, out: FloatArray, work: FloatArray) -> None:
 
 
 def _residual(M: FloatArray, e: Lanes, o: Lanes, E: FloatArray, lag: FloatArray, rows: Rows) -> None:
-    """Put f = (1 - e) E + lag - M into the first row, where lag = e (E - sin E) and E has 17 bits.
+    """Put f = (1 - e) E + lag - M into the first row, where lag = e (E - sin E).
 
-    1 - e is used as high + low, where high has 17 bits, so that high E has no rounding; low has in it what 1 - e
-    itself lost when it was formed from e. M is first taken off the larger of high E and lag, which is at least about
-    M/2, so that neither this difference nor the sum with the smaller one is rounded.
+    M is first taken off the larger of the two terms, which is at least about M/2, so that neither this difference nor
+    the sum with the smaller term is rounded. At last comes what 1 - e lost when it was formed from e.
     """
-    f, low, high = rows
-    _shorten(o, high, low)
-    np.subtract(1.0, o, out=low)
-    low -= e
-    np.subtract(o, high, out=f)
-    low += f
-    low *= E
-    high *= E
-    np.maximum(high, lag, out=f)
-    np.minimum(high, lag, out=high)
+    f, smaller, lost = rows
+    np.multiply(o, E, out=smaller)
+    np.maximum(smaller, lag, out=f)
+    np.minimum(smaller, lag, out=smaller)
     f -= M
-    f += high
-    f += low
+    f += smaller
+    np.subtract(1.0, o, out=lost)
+    lost -= e
+    lost *= E
+    f += lost
 
 
 def _step(

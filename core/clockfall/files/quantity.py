@@ -97,7 +97,8 @@ def parse_quantity(text: str) -> Quantity:
         raise NotAQuantity(text, "write the power of ten after the uncertainty, as in 1.23(4)e-5")
     if part["power"] and not part["outer"] and (part["even"] or part["plus"] or part["minus_first"]):
         raise NotAQuantity(text, "bracket the numbers before their power of ten, as in (1.2 +/- 0.3)e-5")
-    if any(abs(int(power)) > LARGEST_EXPONENT for power in re.findall(r"[\d.][eE]([+-]?\d+)", plain)):
+    numbers = " ".join(text or "" for name, text in part.items() if name != "unit")
+    if any(len(power) > 5 or abs(int(power)) > LARGEST_EXPONENT for power in re.findall(r"[eE]([+-]?\d+)", numbers)):
         raise NotAQuantity(text, f"a power of ten beyond {LARGEST_EXPONENT}")
     scale = Decimal(f"1{part['power'] or ''}")
     value = Decimal(f"{part['sign']}{part['number']}{part['own_power'] or ''}")

@@ -86,9 +86,9 @@ def demo_system(cards: Iterable[Card]) -> SystemFile:
 
 def parse_system(text: str, cards: Iterable[Card], *, name: str = "system") -> SystemFile:
     """Read a system from text; see `read_system`."""
+    if _deepest(text) > DEEPEST_BRACKETS:
+        raise _whole(name, "TOML", f"brackets nested more than {DEEPEST_BRACKETS} deep")
     try:
-        if _deepest(text) > DEEPEST_BRACKETS:
-            raise _whole(name, "TOML", f"brackets nested more than {DEEPEST_BRACKETS} deep")
         tables = tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
         raise BadFile(name, [_not_toml(error, text)]) from error
@@ -148,8 +148,8 @@ def _not_toml(error: tomllib.TOMLDecodeError, text: str) -> Fault:
     line = int(place[1]) if place else text.count("\n") + 1
     said = re.sub(r"\s*\(at .*\)", "", message)
     content = text.split("\n")[line - 1].strip() if line <= text.count("\n") + 1 else ""
-    bare = re.match(r"""[\w.-]+\s*=\s*[^"'\[{\s]""", content)
-    hint = "write quantities as text in quotes" if bare and "Invalid" in said else ""
+    bare = re.match(r"[\w.-]+\s*=\s*[-+.\d]", content)
+    hint = "write quantities as text in quotes" if bare else ""
     return Fault("", line, "TOML", f"{content[:60]!r} ({said})", hint)
 
 
@@ -267,6 +267,9 @@ class _Reader:
         description = FIELDS[name]
         if name in ("right_ascension", "declination") and isinstance(value, str):
             match = _SEXAGESIMAL.fullmatch(value.strip())
+            if match and (int(match[3]) >= 60 or float(match[4]) >= 60.0):
+                self.fault(path, "minutes and seconds below 60", repr(value))
+                return None
             if match:
                 return self.within(
                     path, _angle(match, hours=name == "right_ascension"), description.within, "rad", value
