@@ -5,8 +5,8 @@ from __future__ import annotations
 from typing import Final
 
 import numpy as np
-from numpy.polynomial.polynomial import polyval
 
+from clockfall.binary.blocks import in_blocks
 from clockfall.binary.constants import T_SUN
 from clockfall.binary.ranges import FloatArray
 from clockfall.binary.state import BinaryState
@@ -48,20 +48,21 @@ def enhancement(eccentricity: FloatArray, one_minus_e_squared: FloatArray) -> Fl
     Peters & Mathews (1963), eq. (17) (equation number from memory).
     """
     e_2 = eccentricity**2
-    return (1.0 + e_2 * (73.0 / 24.0 + e_2 * (37.0 / 96.0))) / (one_minus_e_squared**3 * np.sqrt(one_minus_e_squared))
+    s_6 = one_minus_e_squared * one_minus_e_squared * one_minus_e_squared
+    return (1.0 + e_2 * (73.0 / 24.0 + e_2 * (37.0 / 96.0))) / (s_6 * np.sqrt(one_minus_e_squared))
 
 
-def decay_scale(state: BinaryState) -> FloatArray:
-    """Return (T_sun n)^(5/3) m_1 m_2 M^(-1/3) [1], common to both rates; shape batch."""
-    m_1, m_2, M, n = state.known("mass_1", "mass_2", "total_mass", "mean_motion")
-    return np.cbrt((T_SUN * n) ** 5 / M) * m_1 * m_2
+def decay_scale(m_1: FloatArray, m_2: FloatArray, n: FloatArray) -> FloatArray:
+    """Return (T_sun n)^(5/3) m_1 m_2 M^(-1/3) [1], common to all formulas, from [Msun], [Msun], [rad/s]; any shape."""
+    y = T_SUN * n
+    return y * np.cbrt(y * y / (m_1 + m_2)) * m_1 * m_2  # numpy's power of an array is many times slower
 
 
 @hook
 def secular_rates(state: BinaryState) -> Rates:
     """Return the rates of the orbital period [s/s] and of the eccentricity [1/s]; shape batch."""
-    e, s_2, n = state.known("eccentricity", "one_minus_e_squared", "mean_motion")
-    scale = decay_scale(state)
+    m_1, m_2, n, e, s_2 = state.known("mass_1", "mass_2", "mean_motion", "eccentricity", "one_minus_e_squared")
+    scale = decay_scale(m_1, m_2, n)
     return Rates(
         {
             "orbital_period": -192.0 * np.pi / 5.0 * scale * enhancement(e, s_2),
@@ -101,11 +102,22 @@ S_DENOMINATOR: Final = (
 )
 
 
-def shape_factor(one_minus_e_squared: FloatArray) -> FloatArray:
-    """Return S(s) [1] for s^2 = 1 - e^2 in (0, 1]; any shape."""
+def shape_factor(s: FloatArray) -> FloatArray:
+    """Return S(s) [1] for s = sqrt(1 - e^2) in (0, 1]; any shape."""
+    numerator, denominator = S_NUMERATOR[-1] * s, S_DENOMINATOR[-1] * s
+    for a, b in zip(S_NUMERATOR[-2:0:-1], S_DENOMINATOR[-2:0:-1], strict=True):
+        numerator += a
+        numerator *= s
+        denominator += b
+        denominator *= s
+    return (numerator + S_NUMERATOR[0]) / (denominator + S_DENOMINATOR[0])
+
+
+def merger_time_over_circular(one_minus_e_squared: FloatArray) -> FloatArray:
+    """Return s^7 S(s) [1], the time to merger over that of the circular orbit of the same period; any shape."""
     s = np.sqrt(one_minus_e_squared)
-    ratio: FloatArray = polyval(s, S_NUMERATOR) / polyval(s, S_DENOMINATOR)
-    return ratio
+    cube = s * one_minus_e_squared
+    return cube * cube * s * shape_factor(s)
 
 
 def merger_time(state: BinaryState) -> FloatArray:
@@ -114,9 +126,13 @@ def merger_time(state: BinaryState) -> FloatArray:
     Peters (1964), eqs. (5.10, 5.14) (equation numbers from memory): the time in which a, as the quadrupole formula
     shrinks it, reaches 0. Good as long as the orbit is wide against M; the last orbits are no longer its business.
     """
-    s_2, n = state.known("one_minus_e_squared", "mean_motion")
-    circular = 5.0 / (256.0 * decay_scale(state) * n)
-    return circular * s_2**3 * np.sqrt(s_2) * shape_factor(s_2)
+
+    def time(m_1: FloatArray, m_2: FloatArray, P_b: FloatArray, e: FloatArray, rest: FloatArray) -> FloatArray:
+        n = 2.0 * np.pi / P_b
+        circular = 5.0 / (256.0 * decay_scale(m_1, m_2, n) * n)
+        return circular * merger_time_over_circular(rest * (1.0 + e))
+
+    return in_blocks(time, *state.known("mass_1", "mass_2", "orbital_period", "eccentricity", "one_minus_eccentricity"))
 
 
 @hook
@@ -133,37 +149,33 @@ def closed_form_track(state: BinaryState, times: FloatArray) -> ClosedFormTrack:
     left = 1.0 - times / np.asarray(T)[..., None]  # shape batch + (times,)
     with np.errstate(invalid="ignore"):
         remaining = np.where(left > 0.0, left, np.nan)
-    circular = e_0 == 0.0
-    ln_q_0 = np.log(np.where(circular, 1.0, e_0**2 / s_2))
-    ln_q = _ln_q_after(np.where(circular, 0.0, ln_q_0), np.log(remaining))
-    q = np.exp(ln_q)
-    s_2_then = np.where(circular, 1.0, 1.0 / (1.0 + q))
-    e_then = np.where(circular, 0.0 * remaining, np.sqrt(q / (1.0 + q)))
-    before, after = (x**3 * np.sqrt(x) * shape_factor(x) for x in (s_2, s_2_then))
+    q_0 = e_0**2 / s_2  # 0 where it underflows, as on a circle: it counts beside 1 alone
+    d = _change_of_ln_q(q_0, np.log(remaining))
+    s_2_then = 1.0 / (1.0 + q_0 * np.exp(d))
+    e_then = e_0 * np.exp(0.5 * d) * np.sqrt(s_2_then / s_2)
+    before, after = merger_time_over_circular(s_2), merger_time_over_circular(s_2_then)
     period = (
         P_0 * (remaining * before / after) ** 0.375
     )  # a^4 is the remaining time over s^7 S, and P_b goes as a^(3/2)
     return ClosedFormTrack(period, e_then, T)
 
 
-def _ln_q_after(ln_q_0: FloatArray, ln_remaining: FloatArray) -> FloatArray:
-    """Return ln q where ln H has changed by `ln_remaining`; shape batch + (times,), NaN where that is NaN."""
+def _change_of_ln_q(q_0: FloatArray, ln_remaining: FloatArray) -> FloatArray:
+    """Return d = ln(q/q_0) where ln H has changed by `ln_remaining`; shape batch + (times,), NaN where that is NaN."""
 
-    def ln_h_and_slope(ln_q: FloatArray) -> tuple[FloatArray, FloatArray]:
-        q = np.exp(ln_q)
-        e_2, s_2 = q / (1.0 + q), 1.0 / (1.0 + q)
-        w, S = 1.0 + 121.0 / 304.0 * e_2, shape_factor(s_2)
-        # ln H with p = q/(1 + q): the logarithm of 1 + q by log1p, so that a small q keeps its digits
-        ln_h = 24.0 / 19.0 * ln_q + (0.5 - 24.0 / 19.0) * np.log1p(q) + 3480.0 / 2299.0 * np.log(w) + np.log(S)
+    def ln_h_and_slope(d: FloatArray | float) -> tuple[FloatArray, FloatArray]:
+        q = q_0 * np.exp(d)
+        w, S = 1.0 + 121.0 / 304.0 * q / (1.0 + q), shape_factor(1.0 / np.sqrt(1.0 + q))
+        # p = q/(1 + q) = e^2 and s^2 = 1/(1 + q); ln H but for the constant 24/19 ln q_0
+        ln_h = 24.0 / 19.0 * d + (0.5 - 24.0 / 19.0) * np.log1p(q) + 3480.0 / 2299.0 * np.log(w) + np.log(S)
         return ln_h, 24.0 / (19.0 * w * S)
 
-    start, slope = ln_h_and_slope(ln_q_0)
-    target = start + ln_remaining
-    ln_q = ln_q_0 + ln_remaining / slope
+    start, slope = ln_h_and_slope(0.0)
+    d = ln_remaining / slope
     for _ in range(_NEWTON_STEPS):
-        ln_h, slope = ln_h_and_slope(ln_q)
-        ln_q = ln_q - (ln_h - target) / slope
-    return ln_q
+        ln_h, slope = ln_h_and_slope(d)
+        d = d - (ln_h - start - ln_remaining) / slope
+    return d
 
 
 _NEWTON_STEPS: Final = 7

@@ -136,7 +136,7 @@ def less_turns(x: np.ndarray, turns: np.ndarray) -> Pair:
     return result
 
 
-def residual(M: np.ndarray, E: np.ndarray, o: np.ndarray) -> np.ndarray:
+def residual(M: np.ndarray, E: np.ndarray, e: Pair, o: Pair) -> np.ndarray:
     """(1 - e) E + e (E - sin E) - M in 106 bits."""
     turns = np.rint(M / (2 * np.pi))
     M_near, E_near = less_turns(M, turns), less_turns(E, turns)
@@ -146,21 +146,37 @@ def residual(M: np.ndarray, E: np.ndarray, o: np.ndarray) -> np.ndarray:
         term = constant(Fraction((-1) ** k, math.factorial(2 * k + 3)), E)
         series = pair_sum(pair_product(series, square), term)
     E_minus_sin = pair_product(pair_product(series, square), E_near)
-    e = pair_sum(single(np.ones_like(o)), single(-o))
-    left = pair_sum(pair_product(single(o), E_near), pair_product(e, E_minus_sin))
+    left = pair_sum(pair_product(o, E_near), pair_product(e, E_minus_sin))
     return pair_sum(left, (-M_near[0], -M_near[1]))[0]
 
 
-def within(units: float, M: np.ndarray, E: np.ndarray, o: np.ndarray) -> np.ndarray:
+def within(ulp: int, M: np.ndarray, E: np.ndarray, e: Pair, o: Pair) -> np.ndarray:
     """Tell where the solution lies within so many ulp of E: there the residual, which rises, changes sign."""
-    margin = units * np.spacing(np.abs(E))
-    return (residual(M, E - margin, o) <= 0.0) & (residual(M, E + margin, o) >= 0.0)
+    margin = ulp * np.spacing(np.abs(E))
+    return (residual(M, E - margin, e, o) <= 0.0) & (residual(M, E + margin, e, o) >= 0.0)
+
+
+def less(values: np.ndarray) -> Pair:
+    """1 - values, exactly."""
+    return pair_sum(single(np.ones_like(values)), single(-values))
 
 
 def hard_pairs(count: int, seed: int) -> tuple[np.ndarray, np.ndarray]:
     """M and 1 - e where rounding shows most: E just below 2, where an ulp is least in proportion, and e near 1."""
     rng = np.random.default_rng(seed)
     return rng.uniform(1.05, 1.0907, count), 10.0 ** rng.uniform(-12.0, -3.0, count)
+
+
+def slow_pairs(count: int, seed: int) -> tuple[np.ndarray, np.ndarray]:
+    """Small M, and e a little below 0.5, where 1 - e loses most when it is formed from e."""
+    rng = np.random.default_rng(seed)
+    return 10.0 ** rng.uniform(-8.0, -2.0, count), rng.uniform(0.5, 0.7, count)
+
+
+def turned_pairs(count: int, seed: int) -> tuple[np.ndarray, np.ndarray]:
+    """M of a few turns, and any e."""
+    rng = np.random.default_rng(seed)
+    return rng.uniform(-60.0, 60.0, count), rng.uniform(0.0, 1.0, count)
 
 
 def far_pairs(count: int, seed: int) -> tuple[np.ndarray, np.ndarray]:
@@ -171,20 +187,34 @@ def far_pairs(count: int, seed: int) -> tuple[np.ndarray, np.ndarray]:
     )
 
 
-@pytest.mark.parametrize("pairs", [random_pairs, hard_pairs, far_pairs])
-def test_a_large_sample_stays_within_the_guarantee(pairs: Any) -> None:
-    """Among 1e5 lanes, whose worst is far worse than that of a few hundred, none is off by more than 2 ulp."""
-    M, o = pairs(100_000, 2)
-    E = eccentric_anomaly(M, 1.0 - o, one_minus_eccentricity=o)
-    good = within(2.0, M, E, o)  # the guarantee of the docstring
+@pytest.mark.parametrize("given_as", ["eccentricity", "one_minus_eccentricity"])
+@pytest.mark.parametrize(
+    ("pairs", "share"),
+    [(random_pairs, 0.0055), (hard_pairs, 0.035), (slow_pairs, 0.02), (turned_pairs, 8e-4), (far_pairs, 1e-4)],
+)
+def test_a_large_sample_stays_within_the_guarantee(pairs: Any, share: float, given_as: str) -> None:
+    """Among 5e4 lanes, whose worst is far worse than that of a few hundred, none is off by more than 2 ulp.
+
+    Few are off by more than 1 ulp: the shares are what is found and a fifth or more, which is no matter of luck, for
+    the method has no operation that machines round differently; a rounding that slips into it raises the shares.
+    """
+    M, o = pairs(50_000, 2)
+    if given_as == "eccentricity":
+        e = np.nextafter(1.0 - o, 0.0)  # below 1, and with a last bit that 1 - e has no room for where e < 0.5
+        E, e_pair, o_pair = eccentric_anomaly(M, e), single(e), less(e)
+    else:
+        E, e_pair, o_pair = eccentric_anomaly(M, 1.0 - o, one_minus_eccentricity=o), less(o), single(o)
+    good = within(2, M, E, e_pair, o_pair)  # the guarantee of the docstring
     assert good.all(), (M[~good], o[~good])
+    assert 1.0 - np.mean(within(1, M, E, e_pair, o_pair)) <= share
 
 
 def test_the_check_of_large_samples_can_fail() -> None:
     """The check sees an error of 3 ulp, so that its silence means something."""
     M, o = random_pairs(10_000, 4)
     E = eccentric_anomaly(M, 1.0 - o, one_minus_eccentricity=o)
-    assert not within(2.0, M, E + 5.0 * np.spacing(np.abs(E)), o).any()  # 5 less the 2 that E itself may be off
+    worse = E + 5.0 * np.spacing(np.abs(E))  # 5 less the 2 that E itself may be off
+    assert not within(2, M, worse, less(o), single(o)).any()
 
 
 @pytest.mark.parametrize("function", [mean_anomaly, true_anomaly, eccentric_anomaly_from_true])

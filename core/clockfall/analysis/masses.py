@@ -120,9 +120,9 @@ def _damped(misfit: Misfit, logs: FloatArray, step: FloatArray, before: FloatArr
     share = np.ones(logs.shape[0])
     for _ in range(_HALVINGS):
         trial = logs + share[:, None] * step
-        worse = _norm(misfit(np.exp(trial[:, 0]), np.exp(trial[:, 1]))) > np.maximum(before, _SOLVED)
+        worse = np.asarray(_norm(misfit(np.exp(trial[:, 0]), np.exp(trial[:, 1]))) > np.maximum(before, _SOLVED))
         if not worse.any():
-            return trial
+            break
         share[worse] *= 0.5
     return np.where(worse[:, None], logs, trial)
 
@@ -143,6 +143,6 @@ def _cells_with_sign_changes(misfit: Misfit) -> FloatArray:
     # beyond an edge Newton has no value to start from: start at the corner of the cell that has one
     starts = np.stack([middle[i], middle[j]], axis=-1)
     for k, (di, dj) in enumerate(((0, 0), (1, 0), (0, 1), (1, 1))):
-        usable = at_the_edge.any(axis=-1)[i, j] & meaning[k].all(axis=-1)[i, j]
+        usable = np.any(at_the_edge[i, j], axis=-1) & np.all(meaning[k][i, j], axis=-1)
         starts[usable] = np.stack([axis[i + di], axis[j + dj]], axis=-1)[usable]
     return starts
