@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from typing import Final
 
 import numpy as np
 
-from clockfall.binary.blocks import in_blocks
 from clockfall.binary.constants import T_SUN
 from clockfall.binary.ranges import FloatArray
 from clockfall.binary.state import BinaryState
@@ -28,11 +28,14 @@ def describe() -> Card:
             "Peters & Mathews 1963, Phys. Rev. 131, 435, eqs. (16-17; numbers from memory)",
             "Peters 1964, Phys. Rev. 136, B1224, eqs. (5.6-5.7, 5.11, 5.14; numbers from memory)",
         ),
-        order="leading order (2.5PN in the motion); what is dropped is smaller by (3 + 7 e^2) beta^2/(1 - e^2) or so",
+        order="leading order (2.5PN in the motion); what is dropped is smaller by (3 + 6 e^2) beta^2/(1 - e^2) or so",
         valid="beta^2/(1 - e^2) << 1, and decay slow against the orbit; two point masses in vacuum",
         needs=("mass_1", "mass_2", "orbital_period", "eccentricity"),
         gives=(Rate("orbital_period"), Rate("eccentricity")),
     )
+
+
+# --- the rates -------------------------------------------------------------------------------------------------------
 
 
 def enhancement(eccentricity: FloatArray, one_minus_e_squared: FloatArray) -> FloatArray:
@@ -40,84 +43,116 @@ def enhancement(eccentricity: FloatArray, one_minus_e_squared: FloatArray) -> Fl
 
     Parameters
     ----------
-    eccentricity, one_minus_e_squared : array, any shape [1]
-        e and 1 - e^2, both given, so that nothing is lost near e = 1.
+    eccentricity : array, any shape [1]
+        e, 0 <= e < 1.
+    one_minus_e_squared : array, broadcasts with eccentricity [1]
+        1 - e^2, given beside e so that nothing is lost near e = 1; at least 1e-80.
 
     Notes
     -----
     Peters & Mathews (1963), eq. (17) (equation number from memory).
     """
-    e_2 = eccentricity**2
-    s_6 = one_minus_e_squared * one_minus_e_squared * one_minus_e_squared
-    return (1.0 + e_2 * (73.0 / 24.0 + e_2 * (37.0 / 96.0))) / (s_6 * np.sqrt(one_minus_e_squared))
+    e_2, s_2 = eccentricity**2, one_minus_e_squared
+    return (1.0 + e_2 * (73.0 / 24.0 + e_2 * (37.0 / 96.0))) / (s_2 * s_2 * s_2 * np.sqrt(s_2))
 
 
-def decay_scale(m_1: FloatArray, m_2: FloatArray, n: FloatArray) -> FloatArray:
-    """Return (T_sun n)^(5/3) m_1 m_2 M^(-1/3) [1], common to all formulas, from [Msun], [Msun], [rad/s]; any shape."""
-    y = T_SUN * n
-    return y * np.cbrt(y * y / (m_1 + m_2)) * m_1 * m_2  # numpy's power of an array is many times slower
+def decay_scale(state: BinaryState) -> FloatArray:
+    """Return nu beta^5 = (T_sun n)^(5/3) m_1 m_2 M^(-1/3) [1], common to both rates; shape batch."""
+    m_1, m_2, n, beta = state.known("mass_1", "mass_2", "mean_motion", "orbital_velocity")
+    return m_1 * m_2 * (T_SUN * n) ** 2 / beta  # one cube root, that in beta, and no power of a small number
+
+
+def _w(e_2: FloatArray) -> FloatArray:
+    """Return 1 + 121/304 e^2, which stands in every formula of the evolution."""
+    return 1.0 + 121.0 / 304.0 * e_2
 
 
 @hook
 def secular_rates(state: BinaryState) -> Rates:
-    """Return the rates of the orbital period [s/s] and of the eccentricity [1/s]; shape batch."""
-    m_1, m_2, n, e, s_2 = state.known("mass_1", "mass_2", "mean_motion", "eccentricity", "one_minus_e_squared")
-    scale = decay_scale(m_1, m_2, n)
+    """Return the rates of the orbital period [s/s] and of the eccentricity [1/s]; shape batch.
+
+    The first is the radiated power, Peters & Mathews (1963), eq. (16), through Kepler's third law; the second is
+    Peters (1964), eq. (5.7) (equation numbers from memory).
+    """
+    e, s_2, n = state.known("eccentricity", "one_minus_e_squared", "mean_motion")
+    scale = decay_scale(state)
     return Rates(
         {
             "orbital_period": -192.0 * np.pi / 5.0 * scale * enhancement(e, s_2),
-            "eccentricity": -304.0 / 15.0 * scale * n * e * _one_plus(e) / (s_2**2 * np.sqrt(s_2)),
+            "eccentricity": -304.0 / 15.0 * scale * n * e * _w(e**2) / (s_2 * s_2 * np.sqrt(s_2)),
         }
     )
 
 
-def _one_plus(e: FloatArray) -> FloatArray:
-    """Return 1 + 121/304 e^2, which stands in every formula of the evolution."""
-    return 1.0 + 121.0 / 304.0 * e**2
+# --- the time to merger ----------------------------------------------------------------------------------------------
 
-
-# The time to merger is a^4/(4 b) s^7 S(s) with s = sqrt(1 - e^2) and b = (64/5) G^3 m_1 m_2 M/c^5: Peters's
-# integral, eq. (5.14), with its behaviour at both ends taken out. S is smooth, from 768/425 at e = 1 to 1 at e = 0.
-# It is interpolated by a rational function at 15 Chebyshev nodes of [0, 1], computed to 50 digits; relative error
-# at most 1.8e-15. The tests compute the integral anew.
-S_NUMERATOR: Final = (
-    1.8070588235294101504,
-    0.20128302116412788134,
-    -0.99846925957632736974,
-    0.21393809339081361771,
-    0.010248706686592488996,
-    0.00027143378555286110514,
-    -0.00011804048958136218623,
-    0.000070627470415371141607,
+# S(s) with s = sqrt(1 - e^2) is Peters's integral with its behaviour at both ends taken out: smooth, from 768/425 at
+# e = 1 to 1 at e = 0. Its nearest singularity is s = -1, so a rational function of type (8, 7) follows it on [0, 1] to
+# 1.2e-16 of itself (minimax in the relative error: Remez exchange in 50 digits). The tests integrate anew.
+SHAPE_NUMERATOR: Final = (
+    1.807058823529412,
+    0.0984860347714989,
+    -0.9225987790710086,
+    0.17866901751973366,
+    0.02587085600811205,
+    -0.004506549065511516,
+    0.0012279455688253913,
+    -0.00020680004951527167,
+    3.920188998238526e-05,
 )
-S_DENOMINATOR: Final = (
+SHAPE_DENOMINATOR: Final = (
     1.0,
-    1.5669036688561198737,
-    -0.37541346918677648516,
-    -1.2582419373757341416,
-    -0.01673012172677167926,
-    0.33720598345970717339,
-    0.0092338433893141896012,
-    -0.028674561454857460668,
+    1.510017315709622,
+    -0.4162268819542242,
+    -1.2175018105295372,
+    -0.0032062241430147864,
+    0.32971743838850226,
+    0.010985421061555601,
+    -0.029745507431374725,
 )
 
 
-def shape_factor(s: FloatArray) -> FloatArray:
-    """Return S(s) [1] for s = sqrt(1 - e^2) in (0, 1]; any shape."""
-    numerator, denominator = S_NUMERATOR[-1] * s, S_DENOMINATOR[-1] * s
-    for a, b in zip(S_NUMERATOR[-2:0:-1], S_DENOMINATOR[-2:0:-1], strict=True):
-        numerator += a
-        numerator *= s
-        denominator += b
-        denominator *= s
-    return (numerator + S_NUMERATOR[0]) / (denominator + S_DENOMINATOR[0])
+def _ratio(numerator: tuple[float, ...], denominator: tuple[float, ...], x: FloatArray) -> FloatArray:
+    """Return the quotient of two polynomials, constant terms first, by Horner's rule."""
+    above, below = numerator[-1] * x + numerator[-2], denominator[-1] * x + denominator[-2]
+    for coefficient in numerator[-3::-1]:
+        above = above * x + coefficient
+    for coefficient in denominator[-3::-1]:
+        below = below * x + coefficient
+    return above / below
 
 
-def merger_time_over_circular(one_minus_e_squared: FloatArray) -> FloatArray:
-    """Return s^7 S(s) [1], the time to merger over that of the circular orbit of the same period; any shape."""
-    s = np.sqrt(one_minus_e_squared)
-    cube = s * one_minus_e_squared
-    return cube * cube * s * shape_factor(s)
+def _blocks(size: int, width: int = 1) -> Iterator[slice]:
+    """Yield slices of a batch, each with few enough elements of `width` numbers for the scratch to stay in cache."""
+    lanes = max(1, 8192 // max(1, width))
+    return (slice(start, start + lanes) for start in range(0, size, lanes))
+
+
+def merger_fraction(one_minus_e_squared: FloatArray) -> FloatArray:
+    """Return s^7 S(s), the time to merger over that of the circular orbit of the same period [1].
+
+    Parameters
+    ----------
+    one_minus_e_squared : array, any shape [1]
+        s^2 = 1 - e^2, in (0, 1].
+
+    Returns
+    -------
+    array, the same shape [1]
+        Right to 1e-15 for the very double given.
+
+    Notes
+    -----
+    (48/19) (a/c_0)^(-4) times the integral of Peters (1964), eq. (5.14), a/c_0 being that of eq. (5.11) (equation
+    numbers from memory).
+    """
+    all_s_2 = np.ravel(one_minus_e_squared)
+    fraction = np.empty(all_s_2.size)
+    for part in _blocks(fraction.size):
+        s_2 = all_s_2[part]
+        s = np.sqrt(s_2)
+        fraction[part] = s_2 * s_2 * s_2 * s * _ratio(SHAPE_NUMERATOR, SHAPE_DENOMINATOR, s)
+    return fraction.reshape(np.shape(one_minus_e_squared))[()]
 
 
 def merger_time(state: BinaryState) -> FloatArray:
@@ -126,60 +161,81 @@ def merger_time(state: BinaryState) -> FloatArray:
     Peters (1964), eqs. (5.10, 5.14) (equation numbers from memory): the time in which a, as the quadrupole formula
     shrinks it, reaches 0. Good as long as the orbit is wide against M; the last orbits are no longer its business.
     """
+    s_2, n = state.known("one_minus_e_squared", "mean_motion")
+    circular = 5.0 / 256.0 / (decay_scale(state) * n)  # a^4/(4 b)
+    return circular * merger_fraction(s_2)
 
-    def time(m_1: FloatArray, m_2: FloatArray, P_b: FloatArray, e: FloatArray, rest: FloatArray) -> FloatArray:
-        n = 2.0 * np.pi / P_b
-        circular = 5.0 / (256.0 * decay_scale(m_1, m_2, n) * n)
-        return circular * merger_time_over_circular(rest * (1.0 + e))
 
-    return in_blocks(time, *state.known("mass_1", "mass_2", "orbital_period", "eccentricity", "one_minus_eccentricity"))
+# --- the orbit at a time ---------------------------------------------------------------------------------------------
+
+# Along one orbit q = e^2/(1 - e^2) is a function of the remaining time alone. With h = H^(19/24), H as below, it is
+# h R(h)^(29/19), and R is nearly rational: this one, minimax in R from e = 0 to 1 - e = 1e-32, gives ln q to 1.9e-5.
+START_NUMERATOR: Final = (1.000012, 1.344465, 0.3863435, 0.04285746, 0.0009698274, 2.112712e-06)
+START_DENOMINATOR: Final = (1.0, 1.182978, 0.1747664, 0.004087256, 8.916475e-06)
 
 
 @hook
 def closed_form_track(state: BinaryState, times: FloatArray) -> ClosedFormTrack:
     """Return period [s] and eccentricity at `times` [s], before or after the state's instant, and the merger time [s].
 
-    Peters (1964), eq. (5.11) (equation number from memory), turned round. The remaining time is a function of e alone
-    along an orbit, H(e) = e^(48/19) (1 + 121/304 e^2)^(3480/2299) S(s)/s, and falls as 1 - t/T. With
-    q = e^2/(1 - e^2), d ln H/d ln q = 24/(19 (1 + 121/304 e^2) S) lies between 1/2 and 24/19, so that Newton's
-    method in ln q meets no obstacle from e = 0 to e = 1.
+    Right to 1e-14 of themselves for the very time before merger, which is T - t with the rounding of both.
     """
-    e_0, s_2, P_0 = (value[..., None] for value in state.known("eccentricity", "one_minus_e_squared", "orbital_period"))
     T = merger_time(state)
-    left = 1.0 - times / np.asarray(T)[..., None]  # shape batch + (times,)
-    with np.errstate(invalid="ignore"):
-        remaining = np.where(left > 0.0, left, np.nan)
-    q_0 = e_0**2 / s_2  # 0 where it underflows, as on a circle: it counts beside 1 alone
-    d = _change_of_ln_q(q_0, np.log(remaining))
-    s_2_then = 1.0 / (1.0 + q_0 * np.exp(d))
-    e_then = e_0 * np.exp(0.5 * d) * np.sqrt(s_2_then / s_2)
-    before, after = merger_time_over_circular(s_2), merger_time_over_circular(s_2_then)
-    period = (
-        P_0 * (remaining * before / after) ** 0.375
-    )  # a^4 is the remaining time over s^7 S, and P_b goes as a^(3/2)
-    return ClosedFormTrack(period, e_then, T)
+    P = np.empty((np.size(T), times.size))
+    e = np.empty_like(P)
+    orbit = [np.ravel(x) for x in (T, *state.known("orbital_period", "eccentricity", "one_minus_e_squared"))]
+    for part in _blocks(len(P), times.size):
+        P[part], e[part] = _orbit_after(times, *(x[part, None] for x in orbit))
+    shape = state.shape + times.shape
+    return ClosedFormTrack(P.reshape(shape), e.reshape(shape), T)
 
 
-def _change_of_ln_q(q_0: FloatArray, ln_remaining: FloatArray) -> FloatArray:
-    """Return d = ln(q/q_0) where ln H has changed by `ln_remaining`; shape batch + (times,), NaN where that is NaN."""
+def _orbit_after(
+    t: FloatArray, T: FloatArray, P_0: FloatArray, e_0: FloatArray, s_0_2: FloatArray
+) -> tuple[FloatArray, FloatArray]:
+    """Return period [s] and eccentricity after `t` [s]; shape of the arguments together; NaN from merger on.
 
-    def ln_h_and_slope(d: FloatArray | float) -> tuple[FloatArray, FloatArray]:
-        q = q_0 * np.exp(d)
-        w, S = 1.0 + 121.0 / 304.0 * q / (1.0 + q), shape_factor(1.0 / np.sqrt(1.0 + q))
-        # p = q/(1 + q) = e^2 and s^2 = 1/(1 + q); ln H but for the constant 24/19 ln q_0
-        ln_h = 24.0 / 19.0 * d + (0.5 - 24.0 / 19.0) * np.log1p(q) + 3480.0 / 2299.0 * np.log(w) + np.log(S)
-        return ln_h, 24.0 / (19.0 * w * S)
+    By Peters (1964), eq. (5.11) (equation number from memory), a^4 s^7 S, and so the remaining time, goes as
 
-    start, slope = ln_h_and_slope(0.0)
-    d = ln_remaining / slope
-    for _ in range(_NEWTON_STEPS):
-        ln_h, slope = ln_h_and_slope(d)
-        d = d - (ln_h - start - ln_remaining) / slope
-    return d
+        H(e) = e^(48/19) (1 + 121/304 e^2)^(3480/2299) S(s)/s.
+
+    So ln H(e) - ln H(e_0) = ln(1 - t/T). The unknown is ln rho, rho = q/q_0 with q = e^2/(1 - e^2): then both
+    e^2 = rho e_0^2/D and 1 - e^2 = s_0^2/D follow from D = s_0^2 + rho e_0^2 without loss, for e_0 = 0 too.
+    """
+    gone = t / T
+    ln_left = np.log(1.0 - np.where(gone < 1.0, gone, np.nan))
+    e_0_2, w_0 = e_0**2, _w(e_0**2)
+    S_0 = _ratio(SHAPE_NUMERATOR, SHAPE_DENOMINATOR, np.sqrt(s_0_2))
+
+    ln_h = 145.0 / 121.0 * np.log(w_0) + 19.0 / 24.0 * (np.log(S_0) - 0.5 * np.log(s_0_2) + ln_left)  # less ln e_0^2
+    start = _ratio(START_NUMERATOR, START_DENOMINATOR, e_0_2 * np.exp(ln_h))
+    ln_rho = np.log(s_0_2) + ln_h + 29.0 / 19.0 * np.log(start)
+
+    rho_e_0_2 = np.exp(ln_rho) * e_0_2
+    D = s_0_2 + rho_e_0_2
+    e_2, s_2 = rho_e_0_2 / D, s_0_2 / D
+    w, S = _w(e_2), _ratio(SHAPE_NUMERATOR, SHAPE_DENOMINATOR, np.sqrt(s_2))
+    error = (
+        24.0 / 19.0 * ln_rho - 29.0 / 38.0 * np.log(D) + 3480.0 / 2299.0 * np.log(w / w_0) + np.log(S / S_0) - ln_left
+    )
+    # Halley's step, once: ln H has the slope 24/(19 w S), by eq. (5.7), whose own logarithm has the slope `bend`. The
+    # step leaves 0.011 times the cube of the start's error, 1e-16.
+    slope = 24.0 / 19.0 / (w * S)
+    bend = slope - 24.0 / 19.0 + 29.0 / 38.0 * e_2 - (3480.0 / 2299.0 - 1.0) * 121.0 / 304.0 * e_2 * s_2 / w
+    ln_rho = ln_rho - error / (slope + 0.5 * bend * error)
+
+    rho = np.exp(ln_rho)
+    D = s_0_2 + rho * e_0_2
+    e = np.minimum(e_0 * np.sqrt(rho / D), _LARGEST_ECCENTRICITY)
+    ln_w = np.log(_w(e**2) / w_0)
+    return P_0 * np.exp(9.0 / 19.0 * ln_rho + 39.0 / 38.0 * np.log(D) + 1305.0 / 2299.0 * ln_w), e  # eq. (5.11)
 
 
-_NEWTON_STEPS: Final = 7
-"""Quadratic convergence from a start that is never off by more than the curvature of a nearly straight line."""
+_LARGEST_ECCENTRICITY: Final = np.nextafter(1.0, 0.0)
+"""Long before the state's instant 1 - e falls below the rounding of e; 1 itself would be no ellipse."""
+
+
+# --- where not to trust it -------------------------------------------------------------------------------------------
 
 
 @hook
@@ -188,9 +244,9 @@ def cautions(state: BinaryState) -> tuple[Caution, ...]:
     beta, e, s_2 = state.known("orbital_velocity", "eccentricity", "one_minus_e_squared")
     a, M, rest = state.known("relative_semi_major_axis", "total_mass", "one_minus_eccentricity")
     said = []
-    # A straight line in e^2 between the next order's ends for equal masses, 3.1 at e = 0 and 9.3 at e = 1 (Blanchet &
-    # Schaefer 1989, MNRAS 239, 845).
-    dropped = float(np.max((3.0 + 7.0 * e**2) * beta**2 / s_2))
+    # A straight line in e^2 within a factor of 2 of the next order, whatever the masses (Blanchet & Schaefer 1989,
+    # MNRAS 239, 845); for equal ones that goes from 3.1 at e = 0 to 9.3 at e = 1.
+    dropped = float(np.max((3.0 + 6.0 * e**2) * beta**2 / s_2))
     if dropped > 1e-6:
         said.append(Caution(f"leading order only: the decay is good to about {dropped:.0e} of itself"))
     closest = float(np.min(a * rest / (T_SUN * M)))
