@@ -48,12 +48,18 @@ def analysis_options(command: F) -> F:
         click.option(
             "--draws",
             type=click.IntRange(1, MOST_DRAWS),
+            metavar="N",
             default=DEFAULT_DRAWS,
             show_default=True,
             help="How many draws carry the uncertainties.",
         ),
         click.option(
-            "--seed", type=click.IntRange(0, 2**63 - 1), default=DEFAULT_SEED, show_default=True, help="Of the draws."
+            "--seed",
+            type=click.IntRange(0, 2**63 - 1),
+            metavar="N",
+            default=DEFAULT_SEED,
+            show_default=True,
+            help="Of the draws.",
         ),
         click.option("--strict", is_flag=True, help="End at the first effect that fails, instead of leaving it out."),
         click.option("--quiet", "-q", is_flag=True, help="Print the main number alone."),
