@@ -89,7 +89,7 @@ def secular_rates(state: BinaryState) -> Rates:
 # S(s) with s = sqrt(1 - e^2) is Peters's integral with its behaviour at both ends taken out: smooth, from 768/425 at
 # e = 1 to 1 at e = 0. Its nearest singularity is s = -1, so a rational function of type (8, 7) follows it on [0, 1] to
 # 1.2e-16 of itself (minimax in the relative error: Remez exchange in 50 digits). The tests integrate anew.
-SHAPE_NUMERATOR: Final = (
+S_NUMERATOR: Final = (
     1.807058823529412,
     0.0984860347714989,
     -0.9225987790710086,
@@ -100,7 +100,7 @@ SHAPE_NUMERATOR: Final = (
     -0.00020680004951527167,
     3.920188998238526e-05,
 )
-SHAPE_DENOMINATOR: Final = (
+S_DENOMINATOR: Final = (
     1.0,
     1.510017315709622,
     -0.4162268819542242,
@@ -112,19 +112,23 @@ SHAPE_DENOMINATOR: Final = (
 )
 
 
-def _ratio(numerator: tuple[float, ...], denominator: tuple[float, ...], x: FloatArray) -> FloatArray:
-    """Return the quotient of two polynomials, constant terms first, by Horner's rule."""
-    above, below = numerator[-1] * x + numerator[-2], denominator[-1] * x + denominator[-2]
-    for coefficient in numerator[-3::-1]:
-        above = above * x + coefficient
-    for coefficient in denominator[-3::-1]:
-        below = below * x + coefficient
-    return above / below
+def _polynomial(coefficients: tuple[float, ...], x: FloatArray) -> FloatArray:
+    """Return the polynomial in x, constant term first, by Horner's rule."""
+    value = coefficients[-1] * x
+    for coefficient in coefficients[-2:0:-1]:
+        value += coefficient
+        value *= x
+    value += coefficients[0]
+    return value
+
+
+def _S(s: FloatArray) -> FloatArray:
+    return _polynomial(S_NUMERATOR, s) / _polynomial(S_DENOMINATOR, s)
 
 
 def _blocks(size: int, width: int = 1) -> Iterator[slice]:
     """Yield slices of a batch, each with few enough elements of `width` numbers for the scratch to stay in cache."""
-    lanes = max(1, 8192 // max(1, width))
+    lanes = max(1, 16384 // max(1, width))
     return (slice(start, start + lanes) for start in range(0, size, lanes))
 
 
@@ -139,19 +143,19 @@ def merger_fraction(one_minus_e_squared: FloatArray) -> FloatArray:
     Returns
     -------
     array, the same shape [1]
-        Right to 1e-15 for the very double given.
+        Right to 1e-15 of itself for the very double given.
 
     Notes
     -----
     (48/19) (a/c_0)^(-4) times the integral of Peters (1964), eq. (5.14), a/c_0 being that of eq. (5.11) (equation
     numbers from memory).
     """
-    all_s_2 = np.ravel(one_minus_e_squared)
-    fraction = np.empty(all_s_2.size)
-    for part in _blocks(fraction.size):
-        s_2 = all_s_2[part]
+    given = np.ravel(one_minus_e_squared)
+    fraction = np.empty(given.size)
+    for part in _blocks(given.size):
+        s_2 = given[part]
         s = np.sqrt(s_2)
-        fraction[part] = s_2 * s_2 * s_2 * s * _ratio(SHAPE_NUMERATOR, SHAPE_DENOMINATOR, s)
+        fraction[part] = s_2 * s_2 * s_2 * s * _S(s)
     return fraction.reshape(np.shape(one_minus_e_squared))[()]
 
 
@@ -161,31 +165,42 @@ def merger_time(state: BinaryState) -> FloatArray:
     Peters (1964), eqs. (5.10, 5.14) (equation numbers from memory): the time in which a, as the quadrupole formula
     shrinks it, reaches 0. Good as long as the orbit is wide against M; the last orbits are no longer its business.
     """
-    s_2, n = state.known("one_minus_e_squared", "mean_motion")
-    circular = 5.0 / 256.0 / (decay_scale(state) * n)  # a^4/(4 b)
-    return circular * merger_fraction(s_2)
+    names = ("mass_1", "mass_2", "orbital_period", "eccentricity", "one_minus_eccentricity")
+    fields = [np.ravel(values) for values in state.known(*names)]
+    T = np.empty(fields[0].size)
+    for part in _blocks(T.size):
+        m_1, m_2, P_b, e, rest = (values[part] for values in fields)
+        M, n, s_2 = m_1 + m_2, 2.0 * np.pi / P_b, rest * (1.0 + e)
+        circular = 5.0 / 256.0 / T_SUN**2 * np.cbrt(T_SUN * M * n) / (m_1 * m_2 * n * n * n)  # a^4/(4 b)
+        T[part] = circular * merger_fraction(s_2)
+    return T.reshape(state.shape)[()]
 
 
 # --- the orbit at a time ---------------------------------------------------------------------------------------------
 
-# Along one orbit q = e^2/(1 - e^2) is a function of the remaining time alone. With h = H^(19/24), H as below, it is
-# h R(h)^(29/19), and R is nearly rational: this one, minimax in R from e = 0 to 1 - e = 1e-32, gives ln q to 1.9e-5.
-START_NUMERATOR: Final = (1.000012, 1.344465, 0.3863435, 0.04285746, 0.0009698274, 2.112712e-06)
-START_DENOMINATOR: Final = (1.0, 1.182978, 0.1747664, 0.004087256, 8.916475e-06)
+# Along every orbit q = e^2/(1 - e^2) is the same function of H, below: with h = H^(19/24) it is h R(h)^(29/19), and R
+# is nearly rational. This one gives ln q to 2e-5 from e = 0 to 1 - e = 1e-32 (minimax in R, rounded to 7 digits).
+R_NUMERATOR: Final = (1.000012, 1.344465, 0.3863435, 0.04285746, 0.0009698274, 2.112712e-06)
+R_DENOMINATOR: Final = (1.0, 1.182978, 0.1747664, 0.004087256, 8.916475e-06)
+
+LARGEST_ECCENTRICITY: Final = np.nextafter(1.0, 0.0)
+"""Long before the state's instant 1 - e falls below the rounding of e; 1 itself would be no ellipse."""
 
 
 @hook
 def closed_form_track(state: BinaryState, times: FloatArray) -> ClosedFormTrack:
     """Return period [s] and eccentricity at `times` [s], before or after the state's instant, and the merger time [s].
 
-    Right to 1e-14 of themselves for the very time before merger, which is T - t with the rounding of both.
+    Both are right to 2e-14 of themselves for the time that is left, T - t, which has the rounding of T and of t;
+    backwards to t = -1e12 T, to 1e-13.
     """
     T = merger_time(state)
     P = np.empty((np.size(T), times.size))
     e = np.empty_like(P)
-    orbit = [np.ravel(x) for x in (T, *state.known("orbital_period", "eccentricity", "one_minus_e_squared"))]
-    for part in _blocks(len(P), times.size):
-        P[part], e[part] = _orbit_after(times, *(x[part, None] for x in orbit))
+    orbit = [np.ravel(values) for values in (T, *state.known("orbital_period", "eccentricity", "one_minus_e_squared"))]
+    for rows in _blocks(len(P), times.size):
+        for columns in _blocks(times.size):
+            P[rows, columns], e[rows, columns] = _orbit_after(times[columns], *(values[rows, None] for values in orbit))
     shape = state.shape + times.shape
     return ClosedFormTrack(P.reshape(shape), e.reshape(shape), T)
 
@@ -193,46 +208,48 @@ def closed_form_track(state: BinaryState, times: FloatArray) -> ClosedFormTrack:
 def _orbit_after(
     t: FloatArray, T: FloatArray, P_0: FloatArray, e_0: FloatArray, s_0_2: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
-    """Return period [s] and eccentricity after `t` [s]; shape of the arguments together; NaN from merger on.
+    """Return period [s] and eccentricity at `t` [s], NaN from merger on; shape of the arguments broadcast together.
 
-    By Peters (1964), eq. (5.11) (equation number from memory), a^4 s^7 S, and so the remaining time, goes as
-
-        H(e) = e^(48/19) (1 + 121/304 e^2)^(3480/2299) S(s)/s.
-
-    So ln H(e) - ln H(e_0) = ln(1 - t/T). The unknown is ln rho, rho = q/q_0 with q = e^2/(1 - e^2): then both
-    e^2 = rho e_0^2/D and 1 - e^2 = s_0^2/D follow from D = s_0^2 + rho e_0^2 without loss, for e_0 = 0 too.
+    With rho = q/q_0 and D = s_0^2 + rho e_0^2, e^2 is rho e_0^2/D and 1 - e^2 is s_0^2/D. So nothing is lost near
+    e = 1, and e_0 = 0 is no special case. The period goes as a^(3/2), a as in Peters (1964), eq. (5.11) (equation
+    number from memory).
     """
     gone = t / T
     ln_left = np.log(1.0 - np.where(gone < 1.0, gone, np.nan))
-    e_0_2, w_0 = e_0**2, _w(e_0**2)
-    S_0 = _ratio(SHAPE_NUMERATOR, SHAPE_DENOMINATOR, np.sqrt(s_0_2))
+    e_0_2 = e_0**2
+    ln_rho = _ln_rho(ln_left, e_0_2, s_0_2)
+    rho = np.exp(ln_rho)
+    D = s_0_2 + rho * e_0_2
+    e = np.minimum(e_0 * np.sqrt(rho / D), LARGEST_ECCENTRICITY)
+    ln_w = np.log(_w(e**2) / _w(e_0_2))
+    return P_0 * np.exp(9.0 / 19.0 * ln_rho + 39.0 / 38.0 * np.log(D) + 1305.0 / 2299.0 * ln_w), e
 
-    ln_h = 145.0 / 121.0 * np.log(w_0) + 19.0 / 24.0 * (np.log(S_0) - 0.5 * np.log(s_0_2) + ln_left)  # less ln e_0^2
-    start = _ratio(START_NUMERATOR, START_DENOMINATOR, e_0_2 * np.exp(ln_h))
-    ln_rho = np.log(s_0_2) + ln_h + 29.0 / 19.0 * np.log(start)
+
+def _ln_rho(ln_left: FloatArray, e_0_2: FloatArray, s_0_2: FloatArray) -> FloatArray:
+    """Return ln(q/q_0) where the time left has changed by the factor whose logarithm is given.
+
+    The time left goes as a^4 s^7 S, which by Peters (1964), eq. (5.11), is
+
+        H = e^(48/19) w^(3480/2299) S/s = q^(24/19) s^(29/19) w^(3480/2299) S,  w = 1 + 121/304 e^2.
+
+    By eq. (5.7) ln H has the slope 24/(19 w S) in ln q, between 24/19 at e = 0 and 1/2 at e = 1 (equation numbers
+    from memory).
+    """
+    ln_s_0_2, ln_w_0, ln_S_0 = np.log(s_0_2), np.log(_w(e_0_2)), np.log(_S(np.sqrt(s_0_2)))
+    ln_h = 145.0 / 121.0 * ln_w_0 + 19.0 / 24.0 * (ln_S_0 - 0.5 * ln_s_0_2 + ln_left)  # without ln e_0^2
+    h = e_0_2 * np.exp(ln_h)
+    ln_rho = ln_s_0_2 + ln_h + 29.0 / 19.0 * np.log(_polynomial(R_NUMERATOR, h) / _polynomial(R_DENOMINATOR, h))
 
     rho_e_0_2 = np.exp(ln_rho) * e_0_2
     D = s_0_2 + rho_e_0_2
     e_2, s_2 = rho_e_0_2 / D, s_0_2 / D
-    w, S = _w(e_2), _ratio(SHAPE_NUMERATOR, SHAPE_DENOMINATOR, np.sqrt(s_2))
-    error = (
-        24.0 / 19.0 * ln_rho - 29.0 / 38.0 * np.log(D) + 3480.0 / 2299.0 * np.log(w / w_0) + np.log(S / S_0) - ln_left
-    )
-    # Halley's step, once: ln H has the slope 24/(19 w S), by eq. (5.7), whose own logarithm has the slope `bend`. The
-    # step leaves 0.011 times the cube of the start's error, 1e-16.
-    slope = 24.0 / 19.0 / (w * S)
+    w, S = _w(e_2), _S(np.sqrt(s_2))
+    ln_H = 24.0 / 19.0 * ln_rho - 29.0 / 38.0 * np.log(D) + 3480.0 / 2299.0 * (np.log(w) - ln_w_0) + np.log(S) - ln_S_0
+    # One step of Halley's method leaves 0.011 times the cube of the start's error, 1e-16. `bend` is the slope of
+    # ln(w S), for which S need not be differentiated, since ln H and its slope are known.
+    miss, slope = ln_H - ln_left, 24.0 / 19.0 / (w * S)
     bend = slope - 24.0 / 19.0 + 29.0 / 38.0 * e_2 - (3480.0 / 2299.0 - 1.0) * 121.0 / 304.0 * e_2 * s_2 / w
-    ln_rho = ln_rho - error / (slope + 0.5 * bend * error)
-
-    rho = np.exp(ln_rho)
-    D = s_0_2 + rho * e_0_2
-    e = np.minimum(e_0 * np.sqrt(rho / D), _LARGEST_ECCENTRICITY)
-    ln_w = np.log(_w(e**2) / w_0)
-    return P_0 * np.exp(9.0 / 19.0 * ln_rho + 39.0 / 38.0 * np.log(D) + 1305.0 / 2299.0 * ln_w), e  # eq. (5.11)
-
-
-_LARGEST_ECCENTRICITY: Final = np.nextafter(1.0, 0.0)
-"""Long before the state's instant 1 - e falls below the rounding of e; 1 itself would be no ellipse."""
+    return ln_rho - miss / (slope + 0.5 * bend * miss)
 
 
 # --- where not to trust it -------------------------------------------------------------------------------------------

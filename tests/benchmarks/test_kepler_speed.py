@@ -7,10 +7,7 @@ hits both sides alike.
 
 from __future__ import annotations
 
-import time
 import warnings
-from collections.abc import Callable
-from typing import Any
 
 import numpy as np
 import pytest
@@ -18,24 +15,12 @@ import scipy.optimize
 
 from clockfall.binary.kepler import eccentric_anomaly
 
+from .timing import median_ratio
+
 pytestmark = pytest.mark.benchmark_ratio
 
 LANES = 200_000
 LARGEST_RATIO_TO_SC = 1.7
-
-
-def seconds(work: Callable[[], Any]) -> float:
-    """Processor time of one call, so that waiting for a processor does not count."""
-    start = time.thread_time()
-    work()
-    return time.thread_time() - start
-
-
-def median_ratio(work: Callable[[], Any], unit: Callable[[], Any], repeats: int) -> float:
-    """Median over interleaved repeats of the time of `work` in units of that of `unit`."""
-    work()
-    unit()
-    return float(np.median([seconds(work) / seconds(unit) for _ in range(repeats)]))
 
 
 def cases() -> dict[str, tuple[np.ndarray, np.ndarray | float]]:

@@ -6,9 +6,8 @@ import numpy as np
 import pytest
 from scipy.integrate import quad
 
-from clockfall.binary.blocks import in_blocks
 from clockfall.binary.state import BinaryState
-from clockfall_effects.quadrupole_decay import merger_time, merger_time_over_circular
+from clockfall_effects.quadrupole_decay import merger_fraction, merger_time
 
 from .timing import median_ratio
 
@@ -47,11 +46,11 @@ def test_merger_time_costs_little() -> None:
     state = batch()
     (s_2,) = state.known("one_minus_e_squared")
     x = np.random.default_rng(2).uniform(-np.pi, np.pi, LANES)
-    found = merger_time_over_circular(s_2)
+    found = merger_fraction(s_2)
     (e,) = state.known("eccentricity")
     for k in range(50):
         assert found[k] == pytest.approx(by_quadrature(float(e[k])), rel=1e-10)  # the quadrature's own promise, doubled
-    kernel = median_ratio(lambda: in_blocks(merger_time_over_circular, s_2), lambda: (np.sin(x), np.cos(x)), repeats=31)
+    kernel = median_ratio(lambda: merger_fraction(s_2), lambda: (np.sin(x), np.cos(x)), repeats=31)
     whole = median_ratio(lambda: merger_time(state), lambda: (np.sin(x), np.cos(x)), repeats=31)
     print(f"\ntime to merger: {kernel:.2f} SC from 1 - e^2, {whole:.2f} SC from masses, period and e")  # noqa: T201
     assert kernel <= LARGEST_RATIO_TO_SC
@@ -62,9 +61,7 @@ def test_merger_time_against_quadrature() -> None:
     state = batch()
     (s_2,) = state.known("one_minus_e_squared")
     few = [float(e) for e in state.known("eccentricity")[0][:QUADRATURES]]
-    ratio = median_ratio(
-        lambda: [by_quadrature(e) for e in few], lambda: in_blocks(merger_time_over_circular, s_2), repeats=11
-    )
+    ratio = median_ratio(lambda: [by_quadrature(e) for e in few], lambda: merger_fraction(s_2), repeats=11)
     per_binary = ratio * LANES / QUADRATURES
     print(f"\nquadrature over the closed form, for each binary: {per_binary:.0f}")  # noqa: T201
     assert per_binary >= 4000

@@ -407,8 +407,14 @@ BAD = [
     ({"o": 1e-9, "e": 1.1}, "eccentricity: expected 0 <= eccentricity <= 1, found 1.1"),
     ({"o": 0.25}, "eccentricity + one_minus_eccentricity - 1: expected -1e-12 <= "),
     ({"o": 0.5 + 1e-9}, "eccentricity + one_minus_eccentricity - 1: expected -1e-12 <= "),
-    ({"x": np.zeros(3), "e": np.zeros(4)}, "arguments: expected shapes that broadcast together, found (3,) and (4,)"),
-    ({"o": np.full(3, 0.5), "e": np.full(4, 0.5)}, "shapes that broadcast together, found (4,) and (3,)"),
+    (
+        {"x": np.zeros(3), "e": np.zeros(4)},
+        "arguments: expected shapes that broadcast together, found anomaly (3,), eccentricity (4,)",
+    ),
+    (
+        {"o": np.full(3, 0.5), "e": np.full(4, 0.5)},
+        "shapes that broadcast together, found eccentricity (4,), one_minus_eccentricity (3,)",
+    ),
 ]
 
 

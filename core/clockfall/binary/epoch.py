@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from clockfall.binary.constants import SECONDS_PER_DAY
-from clockfall.binary.ranges import ANY, FloatArray, Range
+from clockfall.binary.ranges import ANY, FloatArray, Range, common_shape, real_array
 from clockfall.errors import OutOfRange
 
 __all__ = ["Epoch", "OrbitCount", "orbits_elapsed"]
@@ -224,9 +224,9 @@ class Epoch(_Pair):
         OutOfRange
             A value that is not finite or too large, or shapes that do not broadcast together. A ValueError.
         """
-        later = _real("seconds", seconds)
+        later = real_array("seconds", seconds)
         _SECONDS.check("seconds", later, "s")
-        _require_common_shape(epoch=self.shape, seconds=later.shape)
+        common_shape(epoch=self.shape, seconds=later.shape)
         # The remainder is exact, and so is the whole number of days that is left.
         rest = np.fmod(later, SECONDS_PER_DAY)
         days = ((later - rest) / SECONDS_PER_DAY).astype(np.int64)
@@ -331,9 +331,9 @@ def orbits_elapsed(start: Epoch, end: Epoch, period: ArrayLike) -> OrbitCount:
     The elapsed time and the product of whole orbits and period are carried as unevaluated sums of two doubles:
     T. J. Dekker, Numer. Math. 18, 224 (1971).
     """
-    P = _real("period", period)
+    P = real_array("period", period)
     _PERIOD.check("period", P, "s")
-    _require_common_shape(start=start.shape, end=end.shape, period=P.shape)
+    common_shape(start=start.shape, end=end.shape, period=P.shape)
     days, days_low = _days_between(start, end)
     seconds, seconds_low = _two_product(days, SECONDS_PER_DAY)
     seconds_low += days_low * SECONDS_PER_DAY
@@ -346,23 +346,16 @@ def orbits_elapsed(start: Epoch, end: Epoch, period: ArrayLike) -> OrbitCount:
     return OrbitCount(whole.astype(np.int64), rest / P)
 
 
-def _real(what: str, values: ArrayLike) -> FloatArray:
-    array = np.asarray(values)
-    if array.dtype.kind not in "fiu":
-        raise OutOfRange(what, "real numbers", f"an array of type {array.dtype}")
-    return array.astype(np.float64, copy=False)
-
-
 def _carried(what: str, whole: ArrayLike, fraction: ArrayLike) -> tuple[IntArray, FloatArray]:
     """Check a pair, carry so that the fraction lies in [0, 1), and lock both parts."""
     wholes = np.asarray(whole)
     if wholes.dtype.kind not in "iu":
         raise OutOfRange(what, "integers", f"an array of type {wholes.dtype}", "put the rest into the fraction")
     _WHOLE.check(what, wholes)
-    fractions = _real("fraction", fraction)
+    fractions = real_array("fraction", fraction)
     ANY.check("fraction", fractions)
     _WHOLE.check("fraction", fractions)
-    _require_common_shape(**{what: wholes.shape, "fraction": fractions.shape})
+    common_shape(**{what: wholes.shape, "fraction": fractions.shape})
     carry = np.floor(fractions)
     rest = fractions - carry
     # A negative fraction below half a unit in the last place of 1 rounds to 1 here.
@@ -389,17 +382,9 @@ def _summed(pair: _Pair) -> FloatArray:
     return (whole + fraction)[()]
 
 
-def _require_common_shape(**shapes: tuple[int, ...]) -> None:
-    try:
-        np.broadcast_shapes(*shapes.values())
-    except ValueError:
-        found = ", ".join(f"{name} {shape}" for name, shape in shapes.items())
-        raise OutOfRange("arguments", "shapes that broadcast together", found) from None
-
-
 def _days_between(start: Epoch, end: Epoch) -> tuple[FloatArray, FloatArray]:
     """Return the days from start to end as the sum of two doubles, right to 1e-32 of the first."""
-    _require_common_shape(start=start.shape, end=end.shape)
+    common_shape(start=start.shape, end=end.shape)
     whole = np.asarray(end.day - start.day, dtype=np.float64)
     fraction, fraction_low = _two_sum(end.fraction, -start.fraction)
     days, days_low = _two_sum(whole, fraction)

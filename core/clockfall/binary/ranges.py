@@ -64,3 +64,20 @@ class Range:
 
 ANY = Range()
 POSITIVE = Range(above=0.0)
+
+
+def real_array(what: str, values: npt.ArrayLike) -> FloatArray:
+    """Return `values` as float64; raises OutOfRange for what is no real number (bool, text, complex)."""
+    array = np.asarray(values)
+    if array.dtype.kind not in "fiu":
+        raise OutOfRange(what, "real numbers", f"an array of type {array.dtype}")
+    return array.astype(np.float64, copy=False)
+
+
+def common_shape(**shapes: tuple[int, ...]) -> tuple[int, ...]:
+    """Return the shape to which all broadcast; raises OutOfRange, naming them, where they do not."""
+    try:
+        return np.broadcast_shapes(*shapes.values())
+    except ValueError:
+        found = ", ".join(f"{name} {shape}" for name, shape in shapes.items())
+        raise OutOfRange("arguments", "shapes that broadcast together", found) from None

@@ -15,7 +15,7 @@ import numpy.typing as npt
 
 from clockfall.binary.constants import T_SUN
 from clockfall.binary.epoch import Epoch
-from clockfall.binary.ranges import ANY, POSITIVE, FloatArray, Range
+from clockfall.binary.ranges import ANY, POSITIVE, FloatArray, Range, common_shape
 from clockfall.errors import OutOfRange, UnknownField
 
 
@@ -97,6 +97,11 @@ class BinaryState:
     moment_of_inertia_1: FloatArray | None = _described(
         "Msun ls2", "g cm2", "moment of inertia of body 1", "spin", POSITIVE
     )
+    spin_period_2: FloatArray | None = _described("s", "s", "spin period of body 2", "spin", POSITIVE)
+    spin_period_rate_2: FloatArray | None = _described("s/s", "s/s", "rate of the spin period of body 2", "spin")
+    moment_of_inertia_2: FloatArray | None = _described(
+        "Msun ls2", "g cm2", "moment of inertia of body 2", "spin", POSITIVE
+    )
     right_ascension: FloatArray | None = _described("rad", "deg", "right ascension", "sky")
     declination: FloatArray | None = _described(
         "rad", "deg", "declination", "sky", Range(at_least=-math.pi / 2, at_most=math.pi / 2)
@@ -115,7 +120,7 @@ class BinaryState:
                 raise UnknownField(name, f"BinaryState has no field {name!r}{_nearest(name)}")
         given = {name: _checked(name, value) for name, value in fields.items() if value is not None}
         _complete_eccentricity(given)
-        shape = _common_shape(given)
+        shape = common_shape(**{name: value.shape for name, value in given.items()})
         for name in FIELDS:
             value = given.get(name)
             if isinstance(value, Epoch):
@@ -287,11 +292,3 @@ def _read_only(array: FloatArray) -> FloatArray:
     array = np.array(array)
     array.flags.writeable = False
     return array.view()
-
-
-def _common_shape(given: Mapping[str, FloatArray | Epoch]) -> tuple[int, ...]:
-    try:
-        return np.broadcast_shapes(*(value.shape for value in given.values()))
-    except ValueError as error:
-        shapes = ", ".join(f"{name} {value.shape}" for name, value in given.items())
-        raise OutOfRange("BinaryState", "shapes that broadcast together", shapes) from error
