@@ -47,4 +47,5 @@ def cautions(state: BinaryState) -> tuple[Caution, ...]:
     dropped = float(np.max(advance_per_radian(state)))
     if dropped < 1e-6:
         return ()
-    return (Caution(f"first order only: the rate is good to about {dropped:.0e} of itself (2PN and spin left out)"),)
+    statement = f"first order only: the rate is good to about {dropped:.0e} of itself (2PN and spin left out)"
+    return (Caution(statement, unless=("periastron-advance-second-order",)),)

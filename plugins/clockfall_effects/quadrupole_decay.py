@@ -179,9 +179,12 @@ def merger_time(state: BinaryState) -> FloatArray:
 # --- the orbit at a time ---------------------------------------------------------------------------------------------
 
 # Along every orbit q = e^2/(1 - e^2) is the same function of H, below: with h = H^(19/24) it is h R(h)^(29/19), and R
-# is nearly rational. This one gives ln q to 2e-5 from e = 0 to 1 - e = 1e-32 (minimax in R, rounded to 7 digits).
-R_NUMERATOR: Final = (1.000012, 1.344465, 0.3863435, 0.04285746, 0.0009698274, 2.112712e-06)
-R_DENOMINATOR: Final = (1.0, 1.182978, 0.1747664, 0.004087256, 8.916475e-06)
+# is nearly rational: R_SLOPE h + R_CONSTANT + sum of residue/(h + distance). This one gives ln q to 2e-5 from e = 0 to
+# 1 - e = 1e-32 (minimax in R, of type (5, 4); constants rounded).
+R_SLOPE: Final = 0.2369448
+R_CONSTANT: Final = 0.1540469
+R_POLES: Final = ((0.01193473, 0.9855077), (2.888276, 7.142147), (9.13002, 38.71648), (79.69179, 411.5496))
+"""Residue and distance of each pole; all lie at h < 0, so that every term is positive."""
 
 LARGEST_ECCENTRICITY: Final = np.nextafter(1.0, 0.0)
 """Long before the state's instant 1 - e falls below the rounding of e; 1 itself would be no ellipse."""
@@ -225,6 +228,13 @@ def _orbit_after(
     return P_0 * np.exp(9.0 / 19.0 * ln_rho + 39.0 / 38.0 * np.log(D) + 1305.0 / 2299.0 * ln_w), e
 
 
+def _R(h: FloatArray) -> FloatArray:
+    value = R_SLOPE * h + R_CONSTANT
+    for residue, distance in R_POLES:
+        value += residue / (h + distance)
+    return value
+
+
 def _ln_rho(ln_left: FloatArray, e_0_2: FloatArray, s_0_2: FloatArray) -> FloatArray:
     """Return ln(q/q_0) where the time left has changed by the factor whose logarithm is given.
 
@@ -237,8 +247,7 @@ def _ln_rho(ln_left: FloatArray, e_0_2: FloatArray, s_0_2: FloatArray) -> FloatA
     """
     ln_s_0_2, ln_w_0, ln_S_0 = np.log(s_0_2), np.log(_w(e_0_2)), np.log(_S(np.sqrt(s_0_2)))
     ln_h = 145.0 / 121.0 * ln_w_0 + 19.0 / 24.0 * (ln_S_0 - 0.5 * ln_s_0_2 + ln_left)  # without ln e_0^2
-    h = e_0_2 * np.exp(ln_h)
-    ln_rho = ln_s_0_2 + ln_h + 29.0 / 19.0 * np.log(_polynomial(R_NUMERATOR, h) / _polynomial(R_DENOMINATOR, h))
+    ln_rho = ln_s_0_2 + ln_h + 29.0 / 19.0 * np.log(_R(e_0_2 * np.exp(ln_h)))
 
     rho_e_0_2 = np.exp(ln_rho) * e_0_2
     D = s_0_2 + rho_e_0_2
@@ -265,7 +274,8 @@ def cautions(state: BinaryState) -> tuple[Caution, ...]:
     # MNRAS 239, 845); for equal ones that goes from 3.1 at e = 0 to 9.3 at e = 1.
     dropped = float(np.max((3.0 + 6.0 * e**2) * beta**2 / s_2))
     if dropped > 1e-6:
-        said.append(Caution(f"leading order only: the decay is good to about {dropped:.0e} of itself"))
+        statement = f"leading order only: the decay is good to about {dropped:.0e} of itself"
+        said.append(Caution(statement, unless=("radiation-next-order",)))
     closest = float(np.min(a * rest / (T_SUN * M)))
     if closest < 30.0:
         said.append(Caution(f"at periastron the bodies come within {closest:.0f} GM/c^2: the formula is a rough guide"))

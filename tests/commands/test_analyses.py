@@ -113,6 +113,7 @@ def test_no_effect_no_budget(clockfall: Command) -> None:
     said = clockfall("decay", HULSE_TAYLOR, "--without", "quadrupole-decay")
     assert said.code == 0
     assert "no active effect contributes" in said.out
+    assert "predicted" not in said.out.split("Cautions")[0]
 
 
 def test_weighing_without_the_effect_that_predicts(clockfall: Command) -> None:

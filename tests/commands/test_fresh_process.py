@@ -80,8 +80,9 @@ def test_a_third_partys_effect_takes_part(fresh_clockfall: Command, tmp_path: Pa
     said = fresh_clockfall("rates", FIXTURES / "halden-7-ring.toml", "--json", environment=environment)
     assert said.err == ""
     contributions = said.json["rates"]["longitude_of_periastron_rate"]["contributions"]
-    assert [c["effect"] for c in contributions] == ["periastron-advance", "ring-tide"]
-    assert contributions[1]["uncertainty"] > 0.0
+    by_effect = {c["effect"]: c for c in contributions}
+    assert {"periastron-advance", "ring-tide"} <= set(by_effect)
+    assert by_effect["ring-tide"]["uncertainty"] > 0.0
     idle = fresh_clockfall("rates", "--json", environment=environment).json["idle"]
     assert any(i["effect"] == "ring-tide" and "ring_mass" in i["reason"] for i in idle)
 
@@ -129,6 +130,8 @@ def test_the_manuals_effect_works_as_printed(fresh_clockfall: Command, tmp_path:
     system.write_text(f"{demo}\n[effects.thin-gas]{setting}")
     report = fresh_clockfall("decay", system, "--json", environment=environment).json
     assert "thin-gas" in [c["effect"] for c in report["orbital_period_rate"]["contributions"]]
-    assert any("leaves out thin-gas" in caution["statement"] for caution in report["cautions"])
+    assert any(
+        "leaves out" in caution["statement"] and "thin-gas" in caution["statement"] for caution in report["cautions"]
+    )
     shown = fresh_clockfall("effects", "show", "thin-gas", environment=environment)
     assert "drag_time" in shown.out

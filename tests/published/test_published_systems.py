@@ -18,6 +18,7 @@ from clockfall.analysis.system import Uncertain
 from clockfall.binary.constants import SECONDS_PER_YEAR, SOLAR_MASS, SPEED_OF_LIGHT, T_SUN
 from clockfall.binary.state import BinaryState
 from clockfall.effects.loading import load_host
+from clockfall.files.units import factor
 
 from .conftest import PUBLISHED, Analysed, Published
 
@@ -155,6 +156,76 @@ class TestDoublePulsar:
         # 2PN (+4.4e-4 deg/yr) and spin-orbit (about -4.8e-4 deg/yr) nearly cancel in the sum, which stays inside
         measured = rates["longitude_of_periastron_rate", "measured"].drawn.central
         assert abs(found.central - measured) < found.uncertainty
+
+
+class TestDoublePulsarBudget:
+    """Every row of the published budget of the double pulsar, with the moment of inertia that its mass loss implies."""
+
+    SYSTEM = "psr-j0737-3039a"
+
+    @staticmethod
+    def budget(analysed: Named) -> Outcome:
+        """Return the budget with a moment of inertia of 1.28e45 g cm^2."""
+        pulsar = analysed("psr-j0737-3039a")
+        inertia = Uncertain(1.28e45 * factor("g cm2", "Msun ls2"))
+        return decay_of(
+            pulsar.host, replace(pulsar.system, fields={**pulsar.system.fields, "moment_of_inertia_1": inertia})
+        )
+
+    @pytest.mark.parametrize(
+        ("effect", "row"),
+        [
+            ("quadrupole-decay", "quadrupole"),
+            ("spin-down-mass-loss", "mass_loss"),
+            ("transverse-motion", "transverse_motion"),
+            ("galactic-acceleration", "galaxy"),
+        ],
+    )
+    def test_rows(self, analysed: Named, published: Published, effect: str, row: str) -> None:
+        """Each contribution lies within the published error of its row."""
+        found = {f.effect: f.drawn.central for f in self.budget(analysed).contributions(DECAY)}
+        assert inside(found[effect], published(self.SYSTEM, f"orbital_period_rate_by_{row}"))
+
+    def test_next_order(self, analysed: Named, published: Published) -> None:
+        """The next order of the radiation is the published one to 1 %."""
+        found = {f.effect: f.drawn.central for f in self.budget(analysed).contributions(DECAY)}
+        paper = float(published(self.SYSTEM, "orbital_period_rate_by_next_order").value)
+        assert found["radiation-next-order"] == pytest.approx(paper, rel=0.01)
+
+    def test_ratio(self, analysed: Named, published: Published) -> None:
+        """Measured over predicted is 0.999963(63)."""
+        outcome = self.budget(analysed)
+        paper = published(self.SYSTEM, "orbital_period_rate_ratio")
+        assert inside(central(outcome, DECAY, "ratio"), paper)
+        # the published masses come without their correlation, which widens our error a little
+        assert uncertainty(outcome, DECAY, "ratio") == pytest.approx(float(paper.plus), rel=0.1)
+
+
+def test_hulse_taylor_cleaned_by_effects(analysed: Named, published: Published) -> None:
+    """From sky and distance alone (9.8(31) kpc, as Deller et al. 2018 quote it) the apparent part is -0.025(4)e-12.
+
+    Within 1.5 of the published errors, with R_0 and Theta_0 as the effect states them; the ratio within half an error.
+    """
+    pulsar = analysed("psr-b1913+16")
+    distance = Uncertain(*(number * factor("kpc", "ls") for number in (9.8, 3.1, 3.1)))
+    system = replace(pulsar.system, fields={**pulsar.system.fields, "distance": distance}, apparent={})
+    outcome = decay_of(pulsar.host, system)
+    assert central(outcome, DECAY, "apparent") == pytest.approx(-0.025e-12, abs=1.5 * 0.004e-12)
+    paper = published("psr-b1913+16", "orbital_period_rate_ratio")
+    assert inside(central(outcome, DECAY, "ratio"), paper, 0.5)
+
+
+def test_leading_order_is_what_the_paper_took(analysed: Named, published: Published) -> None:
+    """With the next orders in, masses and prediction move by more than the printed error: said, not hidden.
+
+    The advance then weighs M smaller by 2 f_O beta^2/3 = 9e-6 of itself, and the decay with it.
+    """
+    pulsar = analysed("psr-b1913+16")
+    everything = decay_of(pulsar.host, replace(pulsar.system, without=()))
+    paper = published("psr-b1913+16", "orbital_period_rate_predicted")
+    moved = central(everything, DECAY, "predicted_intrinsic") - float(paper.value)
+    assert 5e-17 < moved < 1.2e-16
+    assert inside(central(everything, DECAY, "ratio"), published("psr-b1913+16", "orbital_period_rate_ratio"))
 
 
 @pytest.mark.parametrize("name", ["psr-j1738+0333", "psr-j0348+0432"])

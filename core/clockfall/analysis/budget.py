@@ -50,10 +50,9 @@ def budget(of: Study, rate: str) -> list[Finding]:
     def total(role: str, values: FloatArray, meaning: str) -> Finding:
         return of.finding(rate, role, values, prediction.unit, prediction.shown_in, meaning)
 
-    sums = [
-        total("predicted_intrinsic", prediction.intrinsic, "sum of the intrinsic contributions"),
-        total("apparent", prediction.apparent, "sum of the apparent contributions"),
-    ]
+    sums = [total("apparent", prediction.apparent, "sum of the apparent contributions")]
+    if has_theory(prediction):
+        sums.insert(0, total("predicted_intrinsic", prediction.intrinsic, "sum of the intrinsic contributions"))
     if rate not in of.sample.measured:
         return [*parts, *sums]
     measured = total("measured", of.sample.measured[rate], "as measured")
@@ -65,6 +64,11 @@ def budget(of: Study, rate: str) -> list[Finding]:
         if f.role != "predicted"
     ]
     return [*parts, *sums, measured, *kept]
+
+
+def has_theory(prediction: Prediction | None) -> bool:
+    """Whether any effect says how the orbit itself changes; otherwise the prediction is not zero, there is none."""
+    return prediction is not None and any(part.card.nature == "intrinsic" for part in prediction.contributions)
 
 
 def contributions(of: Study, prediction: Prediction) -> list[Finding]:
@@ -94,8 +98,8 @@ def _given_apparent(of: Study, prediction: Prediction) -> Finding:
 def _unexplained(of: Study) -> list[Said]:
     """Say what a reader of the budget should know about its ground."""
     said = []
-    if DECAY not in of.predicted:
-        said.append(Said("", "no active effect contributes to the orbital period's rate, so there is no budget"))
+    if not has_theory(of.predicted.get(DECAY)):
+        said.append(Said("", "no active effect contributes to the orbit's own decay, so nothing is predicted"))
     if DECAY in of.sample.measured and DECAY not in of.sample.apparent:
         apparent = of.predicted.get(DECAY)
         if apparent is not None and not np.any(apparent.apparent):

@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from types import MappingProxyType
-from typing import Final
+from typing import Any, Final
 
 import numpy as np
 
@@ -38,6 +38,8 @@ class Sample:
     measured, apparent : mapping of name to array, shape (1 + draws,)
         As in `System`.
     settings : mapping of effect name to mapping of own parameter to array, shape (1 + draws,)
+        As in `System`, with the defaults that have an uncertainty.
+    choices : mapping of effect name to mapping of own choice to str
         As in `System`.
     possible : array, shape (1 + draws,) [bool]
         False for a draw in which a quantity fell outside its range, such as a negative eccentricity. The state holds
@@ -52,6 +54,7 @@ class Sample:
     measured: Mapping[str, FloatArray]
     apparent: Mapping[str, FloatArray]
     settings: Mapping[str, Mapping[str, FloatArray]]
+    choices: Mapping[str, Mapping[str, str]]
     possible: BoolArray
     set_aside: Mapping[str, int]
     seed: int
@@ -60,6 +63,12 @@ class Sample:
     def draws(self) -> int:
         """The number of draws besides the central element."""
         return self.possible.size - 1
+
+    @property
+    def own(self) -> Mapping[str, Mapping[str, Any]]:
+        """Own parameters and choices together, as `Host.apply` takes them."""
+        effects = {*self.settings, *self.choices}
+        return {effect: {**self.settings.get(effect, {}), **self.choices.get(effect, {})} for effect in effects}
 
     def with_state(self, state: BinaryState, possible: BoolArray) -> Sample:
         """Return this sample with another state of the same shape, and where it is possible."""
@@ -97,6 +106,7 @@ def draw(system: System, cards: tuple[Card, ...], *, draws: int = DEFAULT_DRAWS,
     """
     if not 1 <= draws <= MOST_DRAWS:
         raise OutOfRange("draws", f"1 <= draws <= {MOST_DRAWS}", str(draws))
+    system = _with_uncertain_defaults(system, cards)
     quantities = dict(system.quantities())
     uncertain = [path for path, quantity in quantities.items() if not quantity.exact]
     scores = _normal_scores(uncertain, system.correlations, draws, seed)
@@ -128,10 +138,25 @@ def draw(system: System, cards: tuple[Card, ...], *, draws: int = DEFAULT_DRAWS,
                 for effect, own in system.settings.items()
             }
         ),
+        choices=system.choices,
         possible=possible,
         set_aside=MappingProxyType(set_aside),
         seed=seed,
     )
+
+
+def _with_uncertain_defaults(system: System, cards: tuple[Card, ...]) -> System:
+    """Add the defaults of own parameters that have an uncertainty, for effects whose state fields are all given."""
+    settings = {effect: dict(own) for effect, own in system.settings.items()}
+    for card in cards:
+        needs_met = all(name in system.fields or name not in FIELDS for name in card.needs)
+        if not needs_met or card.name in system.without:
+            continue
+        for own in card.parameters:
+            if own.default is not None and own.default_uncertainty > 0.0:
+                spread = own.default_uncertainty
+                settings.setdefault(card.name, {}).setdefault(own.name, Uncertain(own.default, spread, spread))
+    return replace(system, settings=settings)
 
 
 def _range(path: Path, cards: tuple[Card, ...]) -> Range:

@@ -53,7 +53,10 @@ def _stages(host: Host, of: Study) -> list[Finding]:
     central = of.sample.central()
     state = central.state.take(np.array(0))
     choices = of.choices
-    settings = {effect: {name: float(v[0]) for name, v in own.items()} for effect, own in central.settings.items()}
+    settings = {
+        effect: {name: value if isinstance(value, str) else float(value[0]) for name, value in own.items()}
+        for effect, own in central.own.items()
+    }
     applied = host.apply(state, settings, only=choices.only, without=choices.without)
     offered = applied.closed_form_track(np.empty(0))
     if offered is None:

@@ -14,6 +14,7 @@ from clockfall.analysis.outcome import Drawn, Finding, Outcome, Said, UsedEffect
 from clockfall.analysis.system import System
 from clockfall.binary.ranges import FloatArray
 from clockfall.effects.checks import Contribution
+from clockfall.effects.contributions import Settings
 from clockfall.effects.host import Applied
 
 
@@ -53,6 +54,8 @@ class Prediction:
         Sums by nature; a parameter that is no rate is all intrinsic.
     contributions : tuple of Contribution
         What was summed.
+    set_by_file : tuple of str
+        Apparent effects in whose place the system file gives the apparent part.
     """
 
     name: str
@@ -62,6 +65,7 @@ class Prediction:
     intrinsic: FloatArray
     apparent: FloatArray
     contributions: tuple[Contribution, ...]
+    set_by_file: tuple[str, ...] = ()
 
     @property
     def total(self) -> FloatArray:
@@ -78,13 +82,13 @@ def predictions(applied: Applied, given_apparent: Mapping[str, FloatArray]) -> M
     for contribution in (*applied.secular_rates(), *applied.predicted_parameters()):
         by_name.setdefault(contribution.name, []).append(contribution)
     summed = {}
-    for name, parts in by_name.items():
-        if name in given_apparent:
-            parts = [part for part in parts if part.card.nature == "intrinsic"]
+    for name, found in by_name.items():
+        unused = [part for part in found if name in given_apparent and part.card.nature == "apparent"]
+        parts = [part for part in found if all(part is not other for other in unused)]
         zero = np.zeros(applied.state.shape)
         intrinsic = sum((p.values for p in parts if p.card.nature == "intrinsic"), start=zero)
         apparent = sum((p.values for p in parts if p.card.nature == "apparent"), start=zero)
-        first = by_name[name][0]
+        first = found[0]
         summed[name] = Prediction(
             name,
             first.unit,
@@ -93,6 +97,7 @@ def predictions(applied: Applied, given_apparent: Mapping[str, FloatArray]) -> M
             intrinsic,
             given_apparent.get(name, apparent) + zero,
             tuple(parts),
+            tuple(part.card.name for part in unused),
         )
     return MappingProxyType(summed)
 
@@ -143,21 +148,29 @@ class Study:
 
     def outcome(self, findings: Iterable[Finding], facts: Mapping[str, str], cautions: Iterable[Said] = ()) -> Outcome:
         """Close the study: findings with all that is to be said beside them."""
-        applied = self.applied
-        by_effects = [Said(effect, caution.statement) for effect, caution in applied.cautions()]
+        applied, findings = self.applied, tuple(findings)
+        stood_for = {said.effect for said in self._set_by_file()} - {finding.effect for finding in findings}
+        by_effects = [
+            Said(effect, caution.statement) for effect, caution in applied.cautions() if effect not in stood_for
+        ]
         return Outcome(
-            findings=tuple(findings),
+            findings=findings,
             facts=MappingProxyType({**self._facts(), **facts}),
             used=tuple(
                 UsedEffect(e.name, e.version, e.distribution, _settings_text(applied.settings_of(e)))
                 for e in applied.active
             ),
-            idle=tuple(Said(idle.effect, idle.reason) for idle in applied.idle),
+            idle=(*(Said(idle.effect, idle.reason) for idle in applied.idle), *self._set_by_file()),
             failed=tuple(Said(error.effect, str(error)) for error in applied.failures),
             cautions=(*self.cautions, *_set_aside(self), *cautions, *by_effects),
             draws=self.sample.draws,
             seed=self.sample.seed,
         )
+
+    def _set_by_file(self) -> Iterable[Said]:
+        for prediction in self.predicted.values():
+            for effect in prediction.set_by_file:
+                yield Said(effect, f"the system file gives the apparent part of {prediction.name}")
 
     def _facts(self) -> dict[str, str]:
         own = {"system": self.system.name, "masses_from": self.masses_from}
@@ -165,9 +178,10 @@ class Study:
         return own if epoch is None else {**own, "epoch_mjd_tdb": str(epoch.to_decimal())}
 
 
-def _settings_text(settings: Mapping[str, FloatArray]) -> str:
-    """Write the central values of an effect's own parameters as JSON."""
-    return json.dumps({name: float(values[0]) for name, values in settings.items()}) if settings else ""
+def _settings_text(settings: Settings) -> str:
+    """Write the central values of an effect's own parameters, and its choices, as JSON."""
+    own: dict[str, float | str] = {name: float(values[0]) for name, values in settings.items()}
+    return json.dumps({**own, **settings.choices}) if own or settings.choices else ""
 
 
 def _set_aside(study: Study) -> Iterable[Said]:

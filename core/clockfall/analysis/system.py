@@ -63,6 +63,8 @@ class System:
         Apparent parts of measured rates, taken from elsewhere; they stand in for the apparent effects.
     settings : mapping of effect name to mapping of own parameter to Uncertain
         In the unit of the effect's card.
+    choices : mapping of effect name to mapping of own choice to str
+        The words chosen.
     only, without : effects to use alone, or to leave out
     correlations : tuple of Correlation
         Of the drawn quantities.
@@ -75,6 +77,7 @@ class System:
     measured: Mapping[str, Uncertain] = field(default_factory=lambda: _NOTHING)
     apparent: Mapping[str, Uncertain] = field(default_factory=lambda: _NOTHING)
     settings: Mapping[str, Mapping[str, Uncertain]] = field(default_factory=lambda: MappingProxyType({}))
+    choices: Mapping[str, Mapping[str, str]] = field(default_factory=lambda: MappingProxyType({}))
     only: tuple[str, ...] | None = None
     without: tuple[str, ...] = ()
     correlations: tuple[Correlation, ...] = ()

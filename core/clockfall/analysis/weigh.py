@@ -48,7 +48,7 @@ def study(host: Host, system: System, choices: Choices | None = None, *, weigh_a
     if weigh_anew or not given:
         used = _chosen_pair(system, choices)
         sample, cautions = _weighed(host, sample, choices, used)
-    applied = host.apply(sample.state, sample.settings, only=choices.only, without=choices.without)
+    applied = host.apply(sample.state, sample.own, only=choices.only, without=choices.without)
     predicted = predictions(applied, sample.apparent)
     masses_from = "given" if not used else "weighed"
     return Study(system, choices, sample, applied, predicted, masses_from, used, cautions)
@@ -95,7 +95,7 @@ def comparison(of: Study, prediction: Prediction) -> list[Finding]:
         finding("observed", cleaned, f"measured {prediction.meaning}, apparent part taken off"),
         finding("predicted", predicted, f"predicted {prediction.meaning}"),
     ]
-    if np.all(predicted != 0.0):
+    if np.all(predicted != 0.0):  # what no effect predicts has no ratio
         ratio = finding("ratio", cleaned / predicted, "observed over predicted", pure=True)
         difference = finding("difference", cleaned - predicted, "observed minus predicted")
         tension = Finding(
@@ -188,7 +188,7 @@ def _misfit(host: Host, sample: Sample, choices: Choices, pair: tuple[str, str])
 
     def misfit(m_1: FloatArray, m_2: FloatArray) -> FloatArray:
         state = sample.state.replace(mass_1=m_1, mass_2=m_2)
-        applied = host.apply(state, sample.settings, only=choices.only, without=choices.without)
+        applied = host.apply(state, sample.own, only=choices.only, without=choices.without)
         predicted = predictions(applied, sample.apparent)
         return np.stack([_named(predicted, name) / o - 1.0 for name, o in zip(pair, observed, strict=True)], axis=-1)
 

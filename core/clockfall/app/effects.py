@@ -12,9 +12,10 @@ import click
 
 from clockfall.app.analyses import Block
 from clockfall.app.printing import print_blocks
-from clockfall.effects.card import Card
+from clockfall.effects.card import Card, OwnParameter
 from clockfall.effects.host import Effect, Host
 from clockfall.effects.loading import load_host
+from clockfall.files.quantity import format_quantity
 
 
 @click.group("effects", invoke_without_command=True)
@@ -96,11 +97,17 @@ def _card_blocks(host: Host, effect: Effect) -> Iterator[Block]:
     yield Block(tuple(rows))
     yield Block(tuple(_gives(card)), ("gives", "unit", "meaning"))
     if card.parameters:
-        own = tuple(
-            (p.name, p.unit or "1", "none" if p.default is None else f"{p.default:g}", p.meaning)
-            for p in card.parameters
-        )
+        own = tuple((p.name, p.unit or "1", _default(p), p.meaning) for p in card.parameters)
         yield Block(own, ("own parameter", "unit", "default", "meaning"), f"Read from [effects.{card.name}]")
+    if card.choices:
+        words = tuple((choice.name, " or ".join(choice.words), choice.meaning) for choice in card.choices)
+        yield Block(words, ("own choice", "words, the first by default", "meaning"))
+
+
+def _default(parameter: OwnParameter) -> str:
+    if parameter.default is None:
+        return "none"
+    return format_quantity(parameter.default, parameter.default_uncertainty, parameter.default_uncertainty)
 
 
 def _gives(card: Card) -> Iterator[tuple[str, str, str]]:

@@ -53,7 +53,8 @@ def as_text(finding: Finding, unit: str = "", power: int = 0, *, with_unit: bool
     value = finding.drawn.central * scale
     low, high = finding.drawn.interval or (finding.drawn.central, finding.drawn.central)
     plus, minus = max(high * scale - value, 0.0), max(value - low * scale, 0.0)
-    return format_quantity(value, plus, minus, unit if with_unit else "", digits=EXACT_DIGITS)
+    shown = unit if with_unit else ""
+    return format_quantity(value, plus, minus, shown, digits=EXACT_DIGITS, plain=power != 0)
 
 
 def time_unit(finding: Finding) -> str:

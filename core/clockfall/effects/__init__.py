@@ -5,7 +5,7 @@ This is all that an effect needs to import besides `clockfall.binary`:
     from clockfall.effects import Card, Parameter, Predicted, Rate, Rates, Settings, hook
 """
 
-from clockfall.effects.card import APPARENT, INTRINSIC, Card, OwnParameter, Parameter, Rate
+from clockfall.effects.card import APPARENT, INTRINSIC, Card, OwnChoice, OwnParameter, Parameter, Rate
 from clockfall.effects.contributions import Caution, ClosedFormTrack, Predicted, Rates, Settings
 from clockfall.effects.hooks import hook
 
@@ -15,6 +15,7 @@ __all__ = [
     "Card",
     "Caution",
     "ClosedFormTrack",
+    "OwnChoice",
     "OwnParameter",
     "Parameter",
     "Predicted",

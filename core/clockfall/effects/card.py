@@ -79,18 +79,38 @@ class OwnParameter:
         The effect finds the value in `settings[name]`, in `unit`, broadcast to the state's batch.
     default : float or None
         None: the effect is idle until the user gives a value.
-    evolves : bool
-        The effect may return a rate of it.
+    default_uncertainty : float
+        Standard uncertainty of the default, which is drawn with the rest.
     within : Range
         Where it has a meaning, in `unit`.
+    evolves : bool
+        The effect may return a rate of it.
     """
 
     name: str
     unit: str
     meaning: str
     default: float | None = None
-    evolves: bool = False
+    default_uncertainty: float = 0.0
     within: Range = ANY
+    evolves: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class OwnChoice:
+    """A setting of an effect's own that is one of a few words, such as a model; read from ``[effects.<name>]`` too.
+
+    Attributes
+    ----------
+    name, meaning : str
+        The effect finds the word by `settings.choice(name)`.
+    words : tuple of str
+        What may be chosen; the first is the default.
+    """
+
+    name: str
+    words: tuple[str, ...]
+    meaning: str
 
 
 @dataclass(frozen=True, slots=True)
@@ -119,6 +139,8 @@ class Card:
         All that the effect may return.
     parameters : tuple of OwnParameter
         The effect's own parameters.
+    choices : tuple of OwnChoice
+        Its settings that are words.
     replaces : tuple of str
         Effects that step back while this one is active.
 
@@ -138,6 +160,7 @@ class Card:
     gives: tuple[Rate | Parameter, ...]
     nature: Nature = INTRINSIC
     parameters: tuple[OwnParameter, ...] = ()
+    choices: tuple[OwnChoice, ...] = ()
     replaces: tuple[str, ...] = ()
 
     def __post_init__(self) -> None:
@@ -153,7 +176,7 @@ class Card:
             self._require(rate.of in FIELDS or rate.of in evolving, "gives", "a state field", repr(rate.of))
         for need in (*self.needs, *(n for p in self.predicts for n in p.needs)):
             self._require(need in FIELDS or need in DERIVED, "needs", "a state field", repr(need))
-        names = [given.name for given in self.gives] + [own.name for own in self.parameters]
+        names = [item.name for items in (self.gives, self.parameters, self.choices) for item in items]
         twice = sorted({name for name in names if names.count(name) > 1})
         self._require(not twice, "gives", "each name once", ", ".join(twice))
 
@@ -174,3 +197,7 @@ class Card:
     def own(self, name: str) -> OwnParameter | None:
         """Return the own parameter called `name`, or None."""
         return next((own for own in self.parameters if own.name == name), None)
+
+    def choice(self, name: str) -> OwnChoice | None:
+        """Return the own choice called `name`, or None."""
+        return next((choice for choice in self.choices if choice.name == name), None)

@@ -2,15 +2,54 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
+from types import MappingProxyType
+from typing import Any
 
 import numpy as np
 
 from clockfall.binary.ranges import FloatArray
 
-Settings = Mapping[str, FloatArray]
-"""An effect's own parameters by name, each in its declared unit and of the state's batch shape, read-only."""
+
+class Settings(Mapping[str, FloatArray]):
+    """An effect's own parameters by name, each in its declared unit and of the state's batch shape, read-only.
+
+    Parameters
+    ----------
+    values : mapping of str to array
+        The own parameters.
+    choices : mapping of str to str
+        The words chosen.
+    """
+
+    __slots__ = ("_choices", "_values")
+
+    def __init__(self, values: Mapping[str, FloatArray], choices: Mapping[str, str] | None = None) -> None:
+        self._values = MappingProxyType(dict(values))
+        self._choices = MappingProxyType(dict(choices or {}))
+
+    def __getitem__(self, name: str) -> FloatArray:
+        return self._values[name]
+
+    def __iter__(self) -> Iterator[str]:
+        return iter(self._values)
+
+    def __len__(self) -> int:
+        return len(self._values)
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        return type(self), (dict(self._values), dict(self._choices))
+
+    def choice(self, name: str) -> str:
+        """Return the word chosen for an own choice; KeyError where the card has none of that name."""
+        return self._choices[name]
+
+    @property
+    def choices(self) -> Mapping[str, str]:
+        """All words chosen, by name."""
+        return self._choices
+
 
 Values = Mapping[str, FloatArray | np.float64]
 
@@ -49,9 +88,12 @@ class Caution:
     ----------
     statement : str
         One sentence, with the size of the matter.
+    unless : tuple of str
+        Effects that take the reason away: with one of them active the caution is not given.
     """
 
     statement: str
+    unless: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)

@@ -7,7 +7,6 @@ import difflib
 from collections.abc import Callable, Collection, Iterator, Mapping
 from dataclasses import dataclass
 from functools import partial
-from types import MappingProxyType
 from typing import Any, TypeVar
 
 import numpy as np
@@ -211,8 +210,10 @@ class Applied:
         return tuple(self._collect("predicted_parameters", checks.parameters))
 
     def cautions(self) -> tuple[tuple[str, Caution], ...]:
-        """Return (effect name, caution) for every caution of an active effect."""
-        return tuple(self._collect("cautions", checks.cautions))
+        """Return (effect name, caution) for every caution of an active effect that no other active effect meets."""
+        active = {effect.name for effect in self.active}
+        found = self._collect("cautions", checks.cautions)
+        return tuple((name, caution) for name, caution in found if active.isdisjoint(caution.unless))
 
     def closed_form_track(self, times: FloatArray) -> tuple[str, ClosedFormTrack] | None:
         """Return (effect name, track) of the first active effect that offers a closed form, or None."""
@@ -283,18 +284,26 @@ def _missing_for_parameters(card: Card, state: BinaryState) -> Iterator[Idle]:
 
 
 def _own_settings(card: Card, given: Mapping[str, Any], shape: tuple[int, ...]) -> Settings:
-    """Return the effect's own parameters, given or by default, read-only and of the batch's shape."""
+    """Return the effect's own parameters and choices, given or by default, of the batch's shape."""
     own: dict[str, FloatArray] = {}
     for parameter in card.parameters:
         value = given.get(parameter.name, parameter.default)
         if value is not None:
             own[parameter.name] = _own_value(card, parameter, value, shape)
+    words = {choice.name: str(given.get(choice.name, choice.words[0])) for choice in card.choices}
+    for choice in card.choices:
+        if words[choice.name] not in choice.words:
+            allowed = ", ".join(choice.words)
+            raise BadInput(
+                f"[effects.{card.name}] {choice.name}: expected one of {allowed}, found {words[choice.name]!r}"
+            )
+    known = [item.name for items in (card.parameters, card.choices) for item in items]
     for name in given:
-        if card.own(name) is None:
-            near = difflib.get_close_matches(name, [p.name for p in card.parameters], n=1)
+        if name not in known:
+            near = difflib.get_close_matches(name, known, n=1)
             hint = f"; did you mean {near[0]!r}?" if near else ""
             raise BadInput(f"effect {card.name!r} has no parameter {name!r}{hint}")
-    return MappingProxyType(own)
+    return Settings(own, words)
 
 
 def _own_value(card: Card, parameter: OwnParameter, value: Any, shape: tuple[int, ...]) -> FloatArray:

@@ -144,7 +144,9 @@ def _hint(text: str) -> str:
     return ""
 
 
-def format_quantity(value: float, plus: float = 0.0, minus: float = 0.0, unit: str = "", *, digits: int = 10) -> str:
+def format_quantity(
+    value: float, plus: float = 0.0, minus: float = 0.0, unit: str = "", *, digits: int = 10, plain: bool = False
+) -> str:
     """Print a quantity, rounded to its uncertainty; `parse_quantity` reads it back.
 
     Parameters
@@ -153,6 +155,8 @@ def format_quantity(value: float, plus: float = 0.0, minus: float = 0.0, unit: s
         Finite; the 68.3 % interval is [value - minus, value + plus].
     digits : int
         Significant digits of a value without uncertainty.
+    plain : bool
+        Without a power of ten, down to 1e-12; for columns whose heading has one.
 
     Returns
     -------
@@ -163,27 +167,28 @@ def format_quantity(value: float, plus: float = 0.0, minus: float = 0.0, unit: s
     if not all(math.isfinite(number) for number in (value, plus, minus)):
         raise NotAQuantity(f"{value} +{plus} -{minus}", "only finite numbers can be printed")
     largest = max(plus, minus)
-    body = _exact(value, digits) if largest == 0.0 else _rounded(value, plus, minus)
+    least = -12 if plain else -4
+    body = _exact(value, digits, least) if largest == 0.0 else _rounded(value, plus, minus, least)
     return f"{body} {unit}".strip()
 
 
-def _exact(value: float, digits: int) -> str:
+def _exact(value: float, digits: int, least: int) -> str:
     """Print a number without uncertainty to some digits, in plain notation where that reads well."""
     if value == 0.0:
         return "0"
     decimal = Decimal(f"{value:.{digits - 1}e}")
     power = decimal.adjusted()
-    if -5 <= power < digits:
+    if least <= power < digits:
         return f"{decimal.normalize():f}"
     return f"{decimal.scaleb(-power).normalize():f}e{power}"
 
 
-def _rounded(value: float, plus: float, minus: float) -> str:
+def _rounded(value: float, plus: float, minus: float, least: int) -> str:
     lopsided = abs(plus - minus) > 0.1 * max(plus, minus)
     sides = (plus, minus) if lopsided else (0.5 * (plus + minus),) * 2
     # an uncertainty below the last digit of a double says no more than that digit
     place = max(_last_place(min(side for side in sides if side > 0.0)), _last_place(value) - 15 if value else -400)
-    power = _power(value, max(sides), place)
+    power = _power(value, max(sides), place, least)
     quantum = Decimal(1).scaleb(place)
     number, upper, lower = ((Decimal(repr(x)) / quantum).quantize(Decimal(1), ROUND_HALF_EVEN) for x in (value, *sides))
     decimals = power - place
@@ -200,9 +205,9 @@ def _last_place(uncertainty: float) -> int:
     return Decimal(f"{uncertainty:.1e}").adjusted() - 1
 
 
-def _power(value: float, uncertainty: float, place: int) -> int:
+def _power(value: float, uncertainty: float, place: int, least: int) -> int:
     """Return the power of ten to be split off: 0 where plain notation reads well and shows every digit."""
     leading = Decimal(repr(max(abs(value), uncertainty))).adjusted()
-    if -4 <= leading <= 6 and place <= 0:
+    if least <= leading <= 6 and place <= 0:
         return 0
     return leading

@@ -172,7 +172,7 @@ class _Reader:
         fields, epoch, epoch_uncertainty = self.fields()
         measured = self.values("measured", self.measured_unit)
         apparent = self.values("apparent", self.apparent_unit)
-        settings = self.settings()
+        settings, choices = self.settings()
         only, without = self.effect_list("only"), self.effect_list("without")
         system = System(
             name=name,
@@ -182,6 +182,7 @@ class _Reader:
             measured=measured,
             apparent=apparent,
             settings=settings,
+            choices=choices,
             only=only,
             without=without or (),
         )
@@ -334,9 +335,10 @@ class _Reader:
         field = _rate_of(key)
         return rate_units(field)[0] if field else None
 
-    def settings(self) -> dict[str, dict[str, Uncertain]]:
-        """Return the own parameters of effects."""
+    def settings(self) -> tuple[dict[str, dict[str, Uncertain]], dict[str, dict[str, str]]]:
+        """Return the own parameters of effects, and their choices."""
         found: dict[str, dict[str, Uncertain]] = {}
+        choices: dict[str, dict[str, str]] = {}
         for name, table in self.table("effects").items():
             if name in ("only", "without"):
                 continue
@@ -348,7 +350,24 @@ class _Reader:
             elif not isinstance(table, dict):
                 self.fault(("effects", name), f"a table, [effects.{name}]", _kind(table))
             else:
-                found[name] = self.own_parameters(card, table)
+                choices[name] = self.own_choices(card, table)
+                found[name] = self.own_parameters(card, {k: v for k, v in table.items() if not card.choice(k)})
+        return found, {name: words for name, words in choices.items() if words}
+
+    def own_choices(self, card: Card, table: dict[str, Any]) -> dict[str, str]:
+        """Return the words chosen for one effect."""
+        found = {}
+        for choice in card.choices:
+            word = table.get(choice.name)
+            if word is None:
+                continue
+            if not isinstance(word, str) or word not in choice.words:
+                near = difflib.get_close_matches(str(word), choice.words, n=1)
+                expected = f"one of {', '.join(repr(w) for w in choice.words)}"
+                path = ("effects", card.name, choice.name)
+                self.fault(path, expected, _kind(word), f"did you mean {near[0]!r}?" if near else "")
+            else:
+                found[choice.name] = word
         return found
 
     def own_parameters(self, card: Card, table: dict[str, Any]) -> dict[str, Uncertain]:
@@ -358,7 +377,7 @@ class _Reader:
             own = card.own(key)
             path = ("effects", card.name, key)
             if own is None:
-                known = [parameter.name for parameter in card.parameters]
+                known = [item.name for items in (card.parameters, card.choices) for item in items]
                 expected = f"a parameter of {card.name}: {', '.join(known) or 'it has none'}"
                 near = difflib.get_close_matches(key.replace("-", "_"), known, n=1)
                 self.fault(path, expected, key, f"did you mean {near[0]}?" if near else "")
