@@ -13,6 +13,7 @@ from typing import Any, Final
 
 import numpy as np
 
+from clockfall.analysis.parallax import distances
 from clockfall.analysis.system import Correlation, System, Uncertain
 from clockfall.binary.epoch import Epoch
 from clockfall.binary.ranges import ANY, BoolArray, FloatArray, Range
@@ -125,7 +126,20 @@ def draw(system: System, cards: tuple[Card, ...], *, draws: int = DEFAULT_DRAWS,
             array = np.where(inside, array, array[0])
         return array
 
+    def far(parallax: Uncertain) -> FloatArray:
+        found = distances(parallax, scores.get(("fields", "parallax")), system.distance_prior)
+        found = np.resize(found, size)
+        lost = np.isnan(found)
+        if lost[0]:
+            raise OutOfRange("parallax", "0 < parallax", f"{parallax.value} rad", "or give distance_prior = 'volume'")
+        if lost.any():
+            set_aside["parallax"] = int(np.sum(lost))
+            possible[lost] = False
+        return np.where(lost, found[0], found)
+
     fields: dict[str, FloatArray | Epoch] = {name: values(("fields", name)) for name in system.fields}
+    if system.parallax is not None:
+        fields["distance"] = far(system.parallax)
     if system.periastron_epoch is not None:
         fields["periastron_epoch"] = system.periastron_epoch.plus_seconds(values(("fields", "periastron_epoch")))
     return Sample(
@@ -149,7 +163,8 @@ def _with_uncertain_defaults(system: System, cards: tuple[Card, ...]) -> System:
     """Add the defaults of own parameters that have an uncertainty, for effects whose state fields are all given."""
     settings = {effect: dict(own) for effect, own in system.settings.items()}
     for card in cards:
-        needs_met = all(name in system.fields or name not in FIELDS for name in card.needs)
+        given = {*system.fields, *(("distance",) if system.parallax is not None else ())}
+        needs_met = all(name in given or name not in FIELDS for name in card.needs)
         if not needs_met or card.name in system.without:
             continue
         for own in card.parameters:

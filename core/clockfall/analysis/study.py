@@ -30,6 +30,8 @@ class Choices:
         Added to what the system file says; `only` stands in for the file's.
     use : tuple of str
         The measured parameters that weigh the two bodies; empty for the default pair.
+    solve_for, limit : str
+        The inverse questions put to the decay: a field, and an own parameter ``<effect>.<parameter>``; "" for none.
     """
 
     draws: int = DEFAULT_DRAWS
@@ -37,6 +39,8 @@ class Choices:
     only: tuple[str, ...] | None = None
     without: tuple[str, ...] = ()
     use: tuple[str, ...] = ()
+    solve_for: str = ""
+    limit: str = ""
 
     def with_system(self, system: System) -> Choices:
         """Return these choices joined with those of the system file."""
@@ -162,7 +166,7 @@ class Study:
             ),
             idle=(*(Said(idle.effect, idle.reason) for idle in applied.idle), *self._set_by_file()),
             failed=tuple(Said(error.effect, str(error)) for error in applied.failures),
-            cautions=(*self.cautions, *_set_aside(self), *cautions, *by_effects),
+            cautions=(*self.cautions, *_set_aside(self), *_of_the_distance(self.system), *cautions, *by_effects),
             draws=self.sample.draws,
             seed=self.sample.seed,
         )
@@ -182,6 +186,13 @@ def _settings_text(settings: Settings) -> str:
     """Write the central values of an effect's own parameters, and its choices, as JSON."""
     own: dict[str, float | str] = {name: float(values[0]) for name, values in settings.items()}
     return json.dumps({**own, **settings.choices}) if own or settings.choices else ""
+
+
+def _of_the_distance(system: System) -> Iterable[Said]:
+    """Say how a parallax became a distance."""
+    if system.parallax is not None:
+        ways = {"none": "its reciprocal, without a prior", "volume": "equal numbers in equal volumes up to 25 kpc"}
+        yield Said("", f"the distance is from the parallax: {ways[system.distance_prior]}")
 
 
 def _set_aside(study: Study) -> Iterable[Said]:

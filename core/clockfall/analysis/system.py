@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from types import MappingProxyType
-from typing import Final
+from typing import Final, Literal
 
 from clockfall.binary.epoch import Epoch
 
@@ -57,6 +57,10 @@ class System:
         A passage of periastron (MJD, TDB).
     periastron_epoch_uncertainty : Uncertain
         Its value is 0 [s].
+    parallax : Uncertain or None
+        [rad]; then `fields` has no distance.
+    distance_prior : "none" or "volume"
+        How a parallax becomes a distance; see `clockfall.analysis.parallax`.
     measured : mapping of ``<field>_rate`` or parameter name to Uncertain
         What timing measured; rates per second, parameters in the unit of the effect's card.
     apparent : mapping of ``<field>_rate`` to Uncertain
@@ -74,6 +78,8 @@ class System:
     fields: Mapping[str, Uncertain]
     periastron_epoch: Epoch | None = None
     periastron_epoch_uncertainty: Uncertain = Uncertain(0.0)
+    parallax: Uncertain | None = None
+    distance_prior: Literal["none", "volume"] = "none"
     measured: Mapping[str, Uncertain] = field(default_factory=lambda: _NOTHING)
     apparent: Mapping[str, Uncertain] = field(default_factory=lambda: _NOTHING)
     settings: Mapping[str, Mapping[str, Uncertain]] = field(default_factory=lambda: MappingProxyType({}))
@@ -85,13 +91,15 @@ class System:
     def quantities(self) -> Iterator[tuple[tuple[str, ...], Uncertain]]:
         """Yield (path, quantity) of all that has a value, in a fixed order.
 
-        Paths are ``("fields", name)``, ``("fields", "periastron_epoch")``, ``("measured", name)``,
-        ``("apparent", name)`` and ``("settings", effect, name)``.
+        Paths are ``("fields", name)``, with ``periastron_epoch`` and ``parallax`` among the names,
+        ``("measured", name)``, ``("apparent", name)`` and ``("settings", effect, name)``.
         """
         for name, value in sorted(self.fields.items()):
             yield ("fields", name), value
         if self.periastron_epoch is not None:
             yield ("fields", "periastron_epoch"), self.periastron_epoch_uncertainty
+        if self.parallax is not None:
+            yield ("fields", "parallax"), self.parallax
         for name, value in sorted(self.measured.items()):
             yield ("measured", name), value
         for name, value in sorted(self.apparent.items()):

@@ -3,13 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
 import click
 
 from clockfall.analysis.budget import DECAY, decay
+from clockfall.analysis.inverse import limit_of, solve_for
 from clockfall.analysis.outcome import Finding, Outcome
+from clockfall.analysis.study import Choices
+from clockfall.analysis.system import System
 from clockfall.app.analyses import Analysis, Block
 from clockfall.app.numbers import (
     aligned,
@@ -22,6 +26,7 @@ from clockfall.app.numbers import (
     unit_heading,
 )
 from clockfall.app.options import Wishes, analysis_options, run_analysis
+from clockfall.effects.host import Host
 
 
 def report(outcome: Outcome) -> dict[str, Any]:
@@ -52,6 +57,7 @@ def report(outcome: Outcome) -> dict[str, Any]:
             "from": outcome.facts["masses_from"],
         },
         "merger_time": None if merger is None else as_json(merger),
+        "inverse": {f.quantity: {**as_json(f), "role": f.role, "meaning": f.meaning} for f in _inverse(outcome)},
     }
 
 
@@ -91,6 +97,9 @@ def _conclusions(outcome: Outcome) -> Iterator[tuple[str, str]]:
     yield "masses", f"m_1 = {m_1}, m_2 = {m_2} Msun ({outcome.facts['masses_from']})"
     if merger := outcome.get("merger_time"):
         yield "time to merger", as_text(merger, time_unit(merger))
+    for finding in _inverse(outcome):
+        sign = "< " if finding.role == "limit_95" else ""
+        yield finding.quantity, f"{sign}{as_text(finding)}   ({finding.meaning})"
 
 
 def _tension(outcome: Outcome) -> str:
@@ -107,11 +116,27 @@ def headline(outcome: Outcome) -> str:
     return "no effect contributes to the orbital period's rate" if finding is None else as_text(finding)
 
 
-ANALYSIS = Analysis("decay", decay, report, blocks, headline)
+def compute(host: Host, system: System, choices: Choices) -> Outcome:
+    """Return the budget, with the answers to the inverse questions where they are put."""
+    outcome = decay(host, system, choices)
+    for question, answer in ((choices.solve_for, solve_for), (choices.limit, limit_of)):
+        if question:
+            findings, said = answer(host, system, choices, question)
+            outcome = replace(outcome, findings=(*outcome.findings, *findings), cautions=(*said, *outcome.cautions))
+    return outcome
+
+
+def _inverse(outcome: Outcome) -> list[Finding]:
+    return [finding for finding in outcome.findings if finding.role in ("solved", "limit_95")]
+
+
+ANALYSIS = Analysis("decay", compute, report, blocks, headline)
 
 
 @click.command("decay")
 @click.argument("system", required=False, type=click.Path(path_type=Path))
+@click.option("--solve-for", metavar="FIELD", help="Which distance, or moment_of_inertia_1, would make theory agree?")
+@click.option("--limit", metavar="EFFECT.PARAMETER", help="How large may this parameter be, at 95 %?")
 @analysis_options
 def command(system: Path | None, wishes: Wishes) -> None:
     """Take the orbital decay of SYSTEM apart by effect.

@@ -90,7 +90,8 @@ def _gathering(command: Callable[..., Any]) -> Callable[..., Any]:
         **own: Any,
     ) -> Any:
         del debug  # read by clockfall.app.main before any option is parsed
-        choices = Choices(draws, seed, only or None, without, use)
+        inverse = {name: own.pop(name) or "" for name in ("solve_for", "limit") if name in own}
+        choices = Choices(draws, seed, only or None, without, use, **inverse)
         return command(wishes=Wishes(choices, as_json, out, overwrite, quiet, strict), **own)
 
     gathered.__name__ = command.__name__

@@ -335,6 +335,8 @@ def _read_choices(file: Any) -> Choices:
         only=None if only is None else tuple(str(name) for name in only),
         without=tuple(str(name) for name in raw["without"]),
         use=tuple(str(name) for name in raw["use"]),
+        solve_for=str(raw.get("solve_for", "")),
+        limit=str(raw.get("limit", "")),
     )
 
 

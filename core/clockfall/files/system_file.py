@@ -13,10 +13,11 @@ from dataclasses import dataclass
 from decimal import Decimal
 from importlib import resources
 from pathlib import Path
-from typing import Any, Final
+from typing import Any, Final, Literal
 
 import numpy as np
 
+from clockfall.analysis.parallax import PRIORS
 from clockfall.analysis.system import Correlation, System, Uncertain
 from clockfall.binary.constants import SECONDS_PER_DAY
 from clockfall.binary.epoch import Epoch
@@ -170,6 +171,7 @@ class _Reader:
                 self.fault((name,), f"a table: {', '.join(TABLES)}", f"{name!r}", self.misplaced(name, TABLES))
         name = self.name()
         fields, epoch, epoch_uncertainty = self.fields()
+        parallax, distance_prior = self.parallax()
         measured = self.values("measured", self.measured_unit)
         apparent = self.values("apparent", self.apparent_unit)
         settings, choices = self.settings()
@@ -179,6 +181,8 @@ class _Reader:
             fields=fields,
             periastron_epoch=epoch,
             periastron_epoch_uncertainty=epoch_uncertainty,
+            parallax=parallax,
+            distance_prior=distance_prior,
             measured=measured,
             apparent=apparent,
             settings=settings,
@@ -253,14 +257,31 @@ class _Reader:
             known = [name for name, description in FIELDS.items() if description.group == table]
             for key, value in self.table(table).items():
                 path = (table, key)
+                if table == "sky" and key in ("parallax", "distance_prior"):
+                    continue
                 if key not in known:
-                    self.fault(path, f"a key of [{table}]: {', '.join(known)}", key, self.misplaced(key, known))
+                    also = ", parallax, distance_prior" if table == "sky" else ""
+                    expected = f"a key of [{table}]: {', '.join(known)}{also}"
+                    self.fault(path, expected, key, self.misplaced(key, [*known, *also.split(", ")[1:]]))
                 elif key == "periastron_epoch":
                     epoch, epoch_uncertainty = self.epoch(path, value) or (None, epoch_uncertainty)
                 elif (found := self.field(path, value)) is not None:
                     fields[key] = found
         self.check_eccentricity(fields)
+        if "parallax" in self.table("sky") and "distance" in fields:
+            self.fault(("sky", "parallax"), "a distance or a parallax", "both", "leave one of them out")
         return fields, epoch, epoch_uncertainty
+
+    def parallax(self) -> tuple[Uncertain | None, Literal["none", "volume"]]:
+        """Return a parallax [rad] and the prior by which it becomes a distance."""
+        sky = self.table("sky")
+        prior = sky.get("distance_prior", "none")
+        if prior not in PRIORS:
+            self.fault(("sky", "distance_prior"), "'none' or 'volume'", _kind(prior))
+        elif "distance_prior" in sky and "parallax" not in sky:
+            self.fault(("sky", "distance_prior"), "a parallax beside it", "no parallax")
+        found = self.quantity(("sky", "parallax"), sky["parallax"], "rad") if "parallax" in sky else None
+        return found, "volume" if prior == "volume" else "none"
 
     def field(self, path: KeyPath, value: Any) -> Uncertain | None:
         """Return one state field in clockfall's unit."""
@@ -600,9 +621,8 @@ def _addresses(system: System) -> dict[str, list[tuple[str, ...]]]:
     """Return what a correlation may call each quantity: its key, and its key with the table before it."""
     addresses: dict[str, list[tuple[str, ...]]] = {}
     for path, _ in system.quantities():
-        head = {"fields": FIELDS[path[1]].group if path[0] == "fields" else "", "settings": "effects"}.get(
-            path[0], path[0]
-        )
+        group = FIELDS[path[1]].group if path[1] in FIELDS else "sky"  # a parallax is no field
+        head = {"fields": group, "settings": "effects"}.get(path[0], path[0])
         for name in (path[-1], ".".join((head, *path[1:]))):
             addresses.setdefault(name, []).append(path)
     return addresses
