@@ -184,13 +184,15 @@ def _exact(value: float, digits: int, least: int) -> str:
 
 
 def _rounded(value: float, plus: float, minus: float, least: int) -> str:
-    lopsided = abs(plus - minus) > 0.1 * max(plus, minus)
+    place = _place(value, min(side for side in (plus, minus) if side > 0.0))
+    rounded = [_in_units(side, place) for side in (plus, minus)]
+    # decided on what would be printed, so that what is read back is printed alike
+    lopsided = abs(rounded[0] - rounded[1]) > max(rounded) / 10
     sides = (plus, minus) if lopsided else (0.5 * (plus + minus),) * 2
-    # an uncertainty below the last digit of a double says no more than that digit
-    place = max(_last_place(min(side for side in sides if side > 0.0)), _last_place(value) - 15 if value else -400)
+    if not lopsided:
+        place = _place(value, sides[0])
     power = _power(value, max(sides), place, least)
-    quantum = Decimal(1).scaleb(place)
-    number, upper, lower = ((Decimal(repr(x)) / quantum).quantize(Decimal(1), ROUND_HALF_EVEN) for x in (value, *sides))
+    number, upper, lower = (_in_units(x, place) for x in (value, *sides))
     decimals = power - place
     tail = f"e{power}" if power else ""
     shown = f"{number.scaleb(-decimals):f}"
@@ -198,6 +200,17 @@ def _rounded(value: float, plus: float, minus: float, least: int) -> str:
         return f"{shown}({max(int(upper), 1)}){tail}"
     sides_shown = f"+{upper.scaleb(-decimals):f} -{lower.scaleb(-decimals):f}"
     return f"({shown} {sides_shown}){tail}" if power else f"{shown} {sides_shown}"
+
+
+def _place(value: float, uncertainty: float) -> int:
+    """Return the power of ten of the last digit to print."""
+    # an uncertainty below the last digit of a double says no more than that digit
+    return max(_last_place(uncertainty), _last_place(value) - 15 if value else -400)
+
+
+def _in_units(x: float, place: int) -> Decimal:
+    """Return x in units of a power of ten, rounded to a whole number of them."""
+    return (Decimal(repr(x)) / Decimal(1).scaleb(place)).quantize(Decimal(1), ROUND_HALF_EVEN)
 
 
 def _last_place(uncertainty: float) -> int:
