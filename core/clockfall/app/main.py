@@ -19,6 +19,7 @@ COMMANDS: Final = {
     "inspiral": ("clockfall.app.inspiral", "Time to merger from masses, period and eccentricity given here."),
     "effects": ("clockfall.app.effects", "The installed effects; 'effects show NAME' reads one."),
     "show": ("clockfall.app.show", "Read a result file."),
+    "draw": ("clockfall.app.draw", "Draw a result file: the budget, the masses, or the shift of periastron."),
     "compare": ("clockfall.app.compare", "What changed between two result files, by effect, in sigma."),
     "rerun": ("clockfall.app.rerun", "Repeat a result from its file alone, and say whether the numbers agree."),
 }
