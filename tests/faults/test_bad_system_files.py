@@ -74,7 +74,38 @@ ONE_FAULT: dict[str, tuple[str, str, str, str]] = {
     ),
     "nan": (edited(PERIOD, "nan"), "[orbit] orbital_period", "the number nan", "quantity"),
     "nan as text": (edited(PERIOD, '"nan d"'), "[orbit] orbital_period", "'nan d'", "leave out what is not known"),
-    "infinite": (edited(PERIOD, '"1e400 d"'), "[orbit] orbital_period", "'1e400 d'", "power of ten"),
+    "infinite": (edited(PERIOD, '"1e400 d"'), "[orbit] orbital_period", "'1e400 d'", "largest double"),
+    "infinite in seconds": (edited(PERIOD, '"1e307 d"'), "[orbit] orbital_period", "beyond the largest double", "d"),
+    "integer without end": (
+        edited(PERIOD, "0x" + "f" * 5000),
+        "[orbit] orbital_period",
+        "the number beyond 1.8e308 without a unit",
+        "quantity",
+    ),
+    "integer without end, no unit": (
+        edited('"0.41730(2)"', "0x" + "f" * 5000),
+        "[orbit] eccentricity",
+        "beyond 1.8e308",
+        "quantity",
+    ),
+    "epoch without end": (
+        edited('"57241.118205(2)"', '"1e200"'),
+        "[orbit] periastron_epoch",
+        "more than 27000 years",
+        "MJD",
+    ),
+    "power on one side": (
+        edited('"-1.086(9)e-12"', '"-1.086 +/- 0.009e-12"'),
+        "[measured] orbital_period_rate",
+        "'-1.086 +/- 0.009e-12'",
+        "bracket the numbers",
+    ),
+    "eccentricity that a double rounds to 1": (
+        edited('"0.41730(2)"', '"0.99999999999999999999"'),
+        "[orbit] eccentricity",
+        "0.99999999999999999999",
+        "give one_minus_eccentricity",
+    ),
     "unbound": (edited('"0.41730(2)"', '"1.0(1)"'), "[orbit] eccentricity", "'1.0(1)'", "0 <= eccentricity < 1"),
     "negative period": (edited(PERIOD, '"-0.2 d"'), "[orbit] orbital_period", "'-0.2 d'", "0 < orbital_period"),
     "negative mass": (DEMO + '\n[masses]\nmass_1 = "-1.4 Msun"\n', "[masses] mass_1", "'-1.4 Msun'", "0 < mass_1"),
@@ -111,6 +142,39 @@ ONE_FAULT: dict[str, tuple[str, str, str, str]] = {
         "shapiro_range",
         "<field>_rate",
     ),
+    "key of the system before its table": (
+        'notes = "none"\n' + DEMO,
+        "[notes]",
+        "'notes'",
+        "notes belongs in [system]",
+    ),
+    "table within another": (
+        edited("[orbit]", "[orbit]\nsky.distance = 1"),
+        "[orbit] sky",
+        "sky",
+        "[sky] is a table of its own",
+    ),
+    "quoted key": (
+        edited("[orbit]", '[orbit]\n"one_minus_eccentrcity" = "0.5"'),
+        "[orbit] one_minus_eccentrcity",
+        "one_minus_eccentrcity",
+        "did you mean one_minus_eccentricity",
+    ),
+    "name that is empty": (edited('"Halden 7"', '" "'), "[system] name", "' '", "one line"),
+    "name that acts on a terminal": (
+        edited('"Halden 7"', '"\\u001b[31mHalden"'),
+        "[system] name",
+        "\\x1b[31mHalden",
+        "printable",
+    ),
+    "name without end": (edited('"Halden 7"', f'"{"7" * 300}"'), "[system] name", "777", "at most 200"),
+    "system that is no table": (
+        "system = 3\n" + DEMO.partition("[orbit]")[2].partition("[measured]")[2].join(["[measured]", ""]),
+        "[system]",
+        "the number 3",
+        "a table",
+    ),
+    "effects that are no table": ("effects = 3\n" + DEMO, "[effects]", "the number 3", "a table"),
     "no name": (edited('name = "Halden 7"', ""), "[system]", "no name", "printed beside every number"),
     "name that is no text": (
         edited('name = "Halden 7"', "name = 7"),
@@ -144,31 +208,31 @@ ONE_FAULT: dict[str, tuple[str, str, str, str]] = {
     ),
     "correlation of the unknown": (
         DEMO + '\n[[correlation]]\nbetween = ["eccentricity", "mass_1"]\nvalue = 0.5\n',
-        "[correlation.0] between",
+        "[[correlation]] 1, between",
         "mass_1",
         "given in this file",
     ),
     "correlation beyond one": (
         DEMO + '\n[[correlation]]\nbetween = ["eccentricity", "distance"]\nvalue = 1.5\n',
-        "[correlation.0] value",
+        "[[correlation]] 1, value",
         "the number 1.5",
         "from -1 to 1",
     ),
     "correlation of the exact": (
         DEMO + '\n[[correlation]]\nbetween = ["eccentricity", "spin_period_1"]\nvalue = 0.5\n',
-        "[correlation.0] between",
+        "[[correlation]] 1, between",
         "spin_period_1, which is given as exact",
         "uncertainty",
     ),
     "correlation with itself": (
         DEMO + '\n[[correlation]]\nbetween = ["distance", "distance"]\nvalue = 0.5\n',
-        "[correlation.0] between",
+        "[[correlation]] 1, between",
         "distance",
         "two different keys",
     ),
     "correlation of two meanings": (
         DEMO + '\n[[correlation]]\nbetween = ["orbital_period_rate", "distance"]\nvalue = 0.5\n',
-        "[correlation.0] between",
+        "[[correlation]] 1, between",
         "given 2 times",
         "apparent.orbital_period_rate or measured.orbital_period_rate",
     ),
@@ -177,6 +241,19 @@ ONE_FAULT: dict[str, tuple[str, str, str, str]] = {
         "[correlation]",
         "a table",
         "double brackets",
+    ),
+    "correlation of what is wrong itself": (
+        edited('"1.9(2) kpc"', '"1.9(2) kcp"')
+        + '\n[[correlation]]\nbetween = ["eccentricity", "distance"]\nvalue = 0.5\n',
+        "[sky] distance",
+        "'kcp'",
+        "did you mean kpc",
+    ),
+    "list of effects with a number": (
+        DEMO + '\n[effects]\nonly = ["shapiro-delay", 3]\n',
+        "[effects] only",
+        "the number 3 in the list",
+        "a list of effects",
     ),
     "not toml": (edited("[orbit]", "[orbit"), "", "'[orbit'", "TOML"),
     "quantity without quotes": (edited(PERIOD, "0.218540913377(21) d"), "", "0.218540913377(21) d", "text in quotes"),
@@ -192,6 +269,31 @@ ONE_FAULT: dict[str, tuple[str, str, str, str]] = {
         "[sky] right_ascension",
         "'08:61:12.30'",
         "below 60",
+    ),
+    "angle without seconds": (
+        edited('"08:41:12.30"', '"08:41"'),
+        "[sky] right_ascension",
+        "'08:41'",
+        "08:41:12.30",
+    ),
+    "angle with a unit": (
+        edited('"-17:02:44.1"', '"-17:02:44.1 deg"'),
+        "[sky] declination",
+        "'-17:02:44.1 deg'",
+        "-17:02:44.1",
+    ),
+    "angle without quotes": (edited('"08:41:12.30"', "08:41:12.30"), "[sky] right_ascension", "time", "in quotes"),
+    "hour beyond the day": (
+        edited('"08:41:12.30"', '"24:00:00"'),
+        "[sky] right_ascension",
+        "'24:00:00'",
+        "hours from 0 to 24",
+    ),
+    "negative hours": (
+        edited('"08:41:12.30"', '"-00:41:12.30"'),
+        "[sky] right_ascension",
+        "'-00:41:12.30'",
+        "hours from 0 to 24",
     ),
     "declination beyond the pole": (
         edited('"-17:02:44.1"', '"-97:02:44.1"'),
@@ -234,12 +336,18 @@ def test_all_faults_come_at_once_in_the_order_of_lines() -> None:
 
 
 def test_contradicting_correlations_are_named() -> None:
-    """Correlations that no three quantities can have together are a fault that names them."""
-    pairs = [("eccentricity", "distance"), ("distance", "proper_motion_ra"), ("eccentricity", "proper_motion_ra")]
-    text = DEMO + "".join(f'\n[[correlation]]\nbetween = ["{a}", "{b}"]\nvalue = -0.9\n' for a, b in pairs)
-    (fault,) = faults(text)
-    assert "eccentricity" in fault.found
-    assert "contradict" in fault.found
+    """Correlations that no three quantities can have together are a fault that names those three and no other."""
+    pairs = [("orbital_period", "periastron_epoch"), ("periastron_epoch", "distance")]
+    pairs += [("eccentricity", "distance"), ("distance", "proper_motion_ra"), ("eccentricity", "proper_motion_ra")]
+    values = [0.5, 0.1, -0.9, -0.9, -0.9]
+    entries = [
+        f'\n[[correlation]]\nbetween = ["{a}", "{b}"]\nvalue = {v}\n' for (a, b), v in zip(pairs, values, strict=True)
+    ]
+    (fault,) = faults(DEMO + "".join(entries))
+    assert fault.found == "correlations of distance, eccentricity, proper_motion_ra that contradict each other"
+    assert fault.path == "[[correlation]] 3"
+    # the same three with signs that can be
+    parse_system(DEMO + "".join(entries).replace("-0.9", "0.9"), CARDS)
 
 
 def test_a_pair_correlated_twice_is_a_fault() -> None:
@@ -247,7 +355,7 @@ def test_a_pair_correlated_twice_is_a_fault() -> None:
     entry = '\n[[correlation]]\nbetween = ["{}", "{}"]\nvalue = 0.5\n'
     text = DEMO + entry.format("distance", "eccentricity") + entry.format("eccentricity", "distance")
     (fault,) = faults(text)
-    assert fault.path == "[correlation] 1"
+    assert fault.path == "[[correlation]] 2"
     assert "the pair of [[correlation]] 1 again" in fault.found
 
 
@@ -279,7 +387,8 @@ def test_what_is_no_text_is_refused(tmp_path: Path, capsys: pytest.CaptureFixtur
         ("result.toml", b"\x89HDF\r\n\x1a\n", "an HDF5 file"),
         ("deep.toml", deep, "nested more than 50 deep"),
         ("braces.toml", braces, "nested more than 50 deep"),
-        ("keys.toml", b".".join([b"a"] * 5000) + b" = 1", "line 1"),
+        ("keys.toml", b".".join([b"a"] * 50000) + b" = 1", "nested more than 50 deep"),
+        ("quoted.toml", b" . ".join([b'"a"'] * 5000) + b" = 1", "nested more than 50 deep"),
         ("long.toml", b"x = " + b"9" * 5000, "fault"),
         ("huge.toml", b"#" * 2_000_000, "2000000 bytes"),
         ("zero.toml", b'[system]\nname = "a\x00b"', "TOML"),
@@ -319,6 +428,84 @@ def test_no_permission_is_said(tmp_path: Path, capsys: pytest.CaptureFixture[str
     finally:
         if we_are_root:
             os.seteuid(0)
+
+
+def test_a_mark_before_the_text_is_no_fault(tmp_path: Path) -> None:
+    """A byte order mark, which some editors write, does no harm; it stays in the text that is kept."""
+    file = read_system(write(tmp_path / "mark.toml", b"\xef\xbb\xbf" + DEMO.encode()), CARDS)
+    assert file.system.name == "Halden 7"
+    assert file.text == "\ufeff" + DEMO
+
+
+def test_prose_is_neither_nested_nor_a_key() -> None:
+    """Brackets, full stops and lines like keys in strings and comments count for nothing."""
+    prose = f'notes = """\n[orbit]\neccentricity = 3\n{"[" * 99} {"a." * 99}"""\n# {"{" * 99}{"x.y" * 99}\n'
+    text = edited('name = "Halden 7"\n', f'name = "Halden 7"\n{prose}').replace('"0.41730(2)"', '"1.41730(2)"')
+    (fault,) = faults(text)
+    assert fault.line is not None
+    assert text.split("\n")[fault.line - 1].endswith('"1.41730(2)"')
+
+
+def test_a_key_cannot_act_on_the_terminal() -> None:
+    """Control characters of keys are printed as what they are, and no line is wider than 80 columns."""
+    with pytest.raises(BadFile) as caught:
+        parse_system(edited("[orbit]", '[orbit]\n"\\u001b[31mred\\n' + "k" * 200 + '" = 1'), CARDS, name="a\x1b.toml")
+    said = str(caught.value)
+    assert "[orbit] \\x1b[31mred\\x0ak" in said
+    assert "\x1b" not in said
+    assert max(len(line) for line in said.splitlines()) <= 80
+
+
+def test_a_wrong_file_is_told_in_good_time() -> None:
+    """Twenty thousand faults are all told; looking for the nearest name of each would take half a minute."""
+    keys = [f"orbital_perod_{i}" for i in range(20_000)]
+    found = faults('[system]\nname = "x"\n[orbit]\n' + "\n".join(f"{key} = 1" for key in keys))
+    assert [fault.found for fault in found] == keys
+    assert sum(bool(fault.hint) for fault in found) == 100
+
+
+@pytest.mark.parametrize("text", ['[system]\nname = "\ud800"\n', "\ud800"])
+def test_half_a_character_is_a_fault(text: str) -> None:
+    """Text from within Python that no file can hold is a fault too."""
+    assert "surrogate" in faults(text)[0].found
+
+
+NAMES = ["system", "orbit", "masses", "sky", "measured", "apparent", "effects", "correlation", "name", "eccentricity"]
+NAMES += ["mass_1", "declination", "right_ascension", "periastron_epoch", "orbital_period_rate", "between", "value"]
+NAMES += ["galactic-acceleration", "sun_distance", "only", "without", "parallax", "distance_prior", "inclination", "x"]
+key = st.lists(st.sampled_from(NAMES), min_size=1, max_size=3).map(".".join)
+scalar = st.one_of(
+    st.sampled_from(
+        ['"1.4(1) Msun"', '"08:41:12"', '"-00:00:01(2)"', '"57241.1"', '"0.1 kpc"', '"1e-400"', '"3 d2"', '""']
+    ),
+    st.sampled_from(
+        ["true", "nan", "-inf", "1e400", "2026-01-01", "08:41:12", "2026-01-01T00:00:00Z", f"0x{'f' * 4000}"]
+    ),
+    st.floats().map(repr),
+    st.integers().map(str),
+    st.sampled_from([f'"{name}"' for name in NAMES]),
+)
+some_value = st.recursive(
+    scalar,
+    lambda inner: st.one_of(
+        st.lists(inner, max_size=3).map(lambda items: f"[{', '.join(items)}]"),
+        st.tuples(st.sampled_from(NAMES), inner).map(lambda pair: f"{{{pair[0]} = {pair[1]}}}"),
+    ),
+    max_leaves=4,
+)
+line = st.one_of(
+    key.map(lambda k: f"[{k}]"),
+    key.map(lambda k: f"[[{k}]]"),
+    st.tuples(key, some_value).map(" = ".join),
+)
+
+
+@settings(max_examples=400, deadline=None)
+@given(st.lists(line, max_size=8))
+def test_any_toml_of_our_words_gives_faults_or_a_system(lines: list[str]) -> None:
+    """Our own words in any order, with values of every type, give a system or faults, nothing else."""
+    with contextlib.suppress(BadFile):
+        parse_system("\n".join(lines), CARDS)
 
 
 @settings(max_examples=300, deadline=None)

@@ -33,7 +33,7 @@ class Fault:
 
     def __str__(self) -> str:
         where = ", ".join(part for part in (f"line {self.line}" if self.line else "", self.path) if part)
-        lines = [f"  {where}"] if where else []
+        lines = [f"  {_shortened(_printable(where), WIDTH - 2)}"] if where else []
         for label, text in (("expected", self.expected), ("found", self.found), ("hint", self.hint)):
             if text:
                 start = f"    {label + ':':<10}"
@@ -44,8 +44,12 @@ class Fault:
 
 
 def _printable(text: str) -> str:
-    """Replace control characters, which could act on the reader's terminal."""
+    """Replace control characters, which could act on the reader's terminal, and what no terminal can encode."""
     return "".join(c if c.isprintable() else f"\\x{ord(c):02x}" for c in text)
+
+
+def _shortened(text: str, width: int) -> str:
+    return text if len(text) <= width else f"{text[: width - 3]}..."
 
 
 class BadFile(BadInput):
@@ -56,11 +60,12 @@ class BadFile(BadInput):
     file : str
         Its name.
     faults : tuple of Fault
-        All of them, in the order of their lines.
+        All of them, each once, in the order of their lines.
     """
 
     def __init__(self, file: str, faults: Iterable[Fault]) -> None:
         self.file = file
-        self.faults = tuple(sorted(faults, key=lambda fault: (fault.line or 0, fault.path)))
+        different = dict.fromkeys(faults)
+        self.faults = tuple(sorted(different, key=lambda fault: (fault.line or 0, fault.path)))
         count = "1 fault" if len(self.faults) == 1 else f"{len(self.faults)} faults"
-        super().__init__("\n".join([f"{file}: {count}", *(str(fault) for fault in self.faults)]))
+        super().__init__("\n".join([f"{_printable(file)}: {count}", *(str(fault) for fault in self.faults)]))

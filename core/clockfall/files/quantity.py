@@ -9,7 +9,7 @@ from __future__ import annotations
 import math
 import re
 from dataclasses import dataclass
-from decimal import ROUND_HALF_EVEN, Decimal
+from decimal import ROUND_HALF_EVEN, Context, Decimal, localcontext
 from typing import Final
 
 from clockfall.errors import BadInput
@@ -17,8 +17,11 @@ from clockfall.errors import BadInput
 LONGEST: Final = 200
 """The most characters of a quantity's text."""
 
-LARGEST_EXPONENT: Final = 300
-"""The largest power of ten, so that every number is a double."""
+LARGEST_EXPONENT: Final = 400
+"""The largest power of ten: beyond that of any double, and small enough to compute with."""
+
+DOUBLE_DIGITS: Final = 17
+"""Significant digits that tell any two doubles apart; more say nothing."""
 
 _NUMBER: Final = r"(?:\d+(?:\.\d*)?|\.\d+)"
 _QUANTITY: Final = re.compile(
@@ -90,42 +93,70 @@ def parse_quantity(text: str) -> Quantity:
     match = _QUANTITY.fullmatch(plain)
     if match is None or not plain.isascii():
         raise NotAQuantity(text, _hint(plain))
-    part = match.groupdict()
+    part = {name: found or "" for name, found in match.groupdict().items()}
+    if slip := _slip(part):
+        raise NotAQuantity(text, slip)
+    power = _power_of(part["power"])
+    value = _decimal(part["sign"] + part["number"], power + _power_of(part["own_power"]))
+    plus, minus = _uncertainty(part, power)
+    if any(math.isinf(float(number)) for number in (value, plus, minus)):
+        raise NotAQuantity(text, "beyond the largest double, 1.8e308")
+    return Quantity(value, plus, minus, part["unit"].strip())
+
+
+def _slip(part: dict[str, str]) -> str:
+    """Say what is wrong with text of the right shape; "" for nothing."""
     if bool(part["outer"]) != bool(part["closing"]):
-        raise NotAQuantity(text, "a bracket is missing")
+        return "a bracket is missing"
     if part["own_power"] and (part["power"] or part["concise"] or part["concise_plus"]):
-        raise NotAQuantity(text, "write the power of ten after the uncertainty, as in 1.23(4)e-5")
-    if part["power"] and not part["outer"] and (part["even"] or part["plus"] or part["minus_first"]):
-        raise NotAQuantity(text, "bracket the numbers before their power of ten, as in (1.2 +/- 0.3)e-5")
-    numbers = " ".join(text or "" for name, text in part.items() if name != "unit")
-    if any(len(power) > 5 or abs(int(power)) > LARGEST_EXPONENT for power in re.findall(r"[eE]([+-]?\d+)", numbers)):
-        raise NotAQuantity(text, f"a power of ten beyond {LARGEST_EXPONENT}")
-    scale = Decimal(f"1{part['power'] or ''}")
-    value = Decimal(f"{part['sign']}{part['number']}{part['own_power'] or ''}")
-    plus, minus = _uncertainty(part)
-    return Quantity(value * scale, plus * scale, minus * scale, (part["unit"] or "").strip())
+        return "write the power of ten after the uncertainty, as in 1.23(4)e-5"
+    if re.match(r"x\s*10", part["unit"]):
+        return "write a power of ten as e-5"
+    sides = [part[name] for name in ("even", "plus", "minus", "minus_first", "plus_second") if part[name]]
+    bracketed = "bracket the numbers before their power of ten, as in (1.2 +/- 0.3)e-5"
+    if sides and part["power"] and not part["outer"]:
+        return bracketed
+    # 1.2 +0.3 -0.4e-5 would be read otherwise than it is meant; a central 0 needs no power of ten
+    written = [bool(part["own_power"])] if float(part["number"]) else []
+    written += ["e" in side.lower() for side in sides]
+    if sides and any(written) and not all(written):
+        return f"{bracketed}, or give every number its own"
+    powers = re.findall(r"[eE]([+-]?\d+)", " ".join([part["own_power"], part["power"], *sides]))
+    if any(len(power) > 5 or abs(int(power)) > LARGEST_EXPONENT for power in powers):
+        return f"a power of ten beyond {LARGEST_EXPONENT}"
+    return ""
 
 
-def _uncertainty(part: dict[str, str | None]) -> tuple[Decimal, Decimal]:
-    """Return the two sides of the interval, before any common power of ten."""
+def _power_of(text: str) -> int:
+    """Return the power of ten that ``e-5`` or nothing stands for."""
+    return int(text[1:] or 0)
+
+
+def _decimal(number: str, power: int = 0) -> Decimal:
+    """Return number x 10^power from its digits: arithmetic would round to the context's precision."""
+    plain, _, own = number.lower().partition("e")
+    return Decimal(f"{plain}e{power + int(own or 0)}")
+
+
+def _uncertainty(part: dict[str, str], power: int) -> tuple[Decimal, Decimal]:
+    """Return the two sides of the interval, times the common power of ten."""
+    number = part["number"]
     if part["concise"]:
-        both = _concise(part["concise"], part["number"] or "")
+        both = _concise(part["concise"], number, power)
         return both, both
-    if part["concise_plus"] and part["concise_minus"]:
-        number = part["number"] or ""
-        return _concise(part["concise_plus"], number), _concise(part["concise_minus"], number)
+    if part["concise_plus"]:
+        return _concise(part["concise_plus"], number, power), _concise(part["concise_minus"], number, power)
     if part["even"]:
-        return Decimal(part["even"]), Decimal(part["even"])
+        both = _decimal(part["even"], power)
+        return both, both
     plus, minus = part["plus"] or part["plus_second"], part["minus"] or part["minus_first"]
-    return Decimal(plus or 0), Decimal(minus or 0)
+    return _decimal(plus or "0", power), _decimal(minus or "0", power)
 
 
-def _concise(digits: str, number: str) -> Decimal:
+def _concise(digits: str, number: str, power: int) -> Decimal:
     """Return what digits in brackets mean: units of the number's last place, or themselves with a decimal point."""
-    if "." in digits:
-        return Decimal(digits)
-    decimals = len(number.partition(".")[2])
-    return Decimal(digits).scaleb(-decimals)
+    decimals = 0 if "." in digits else len(number.partition(".")[2])
+    return _decimal(digits, power - decimals)
 
 
 def _hint(text: str) -> str:
@@ -141,6 +172,14 @@ def _hint(text: str) -> str:
         return "sexagesimal angles are read for right_ascension and declination alone"
     if re.search(r"\+/-\s*-", text):
         return "an uncertainty is not negative"
+    if re.search(r"[\d.]\s+\(\s*[\d+]", text):
+        return "no blank before the bracket of an uncertainty, as in 1.23(4)"
+    if re.search("[\u00b5\u03bc]", text):  # the micro sign and the Greek letter
+        return "write micro as u, as in us"
+    if "\u00d7" in text:  # the sign of multiplication
+        return "write a power of ten as e-5"
+    if not text.isascii():
+        return f"write it without {next(c for c in text if ord(c) > 127)!r}"
     return ""
 
 
@@ -152,7 +191,7 @@ def format_quantity(
     Parameters
     ----------
     value, plus, minus : float
-        Finite; the 68.3 % interval is [value - minus, value + plus].
+        Finite, `plus` and `minus` not negative; the 68.3 % interval is [value - minus, value + plus].
     digits : int
         Significant digits of a value without uncertainty.
     plain : bool
@@ -162,13 +201,21 @@ def format_quantity(
     -------
     str
         ``4.226585(40) deg/yr``; with a power of ten where the number is very small or large; as
-        ``1.3220 +0.0060 -0.0040 Msun`` where the two sides differ by more than a tenth.
+        ``1.3220 +0.0060 -0.0040 Msun`` where the two sides, as printed, differ by more than a tenth.
+
+    Raises
+    ------
+    NotAQuantity
+        A number that is not finite, or a negative uncertainty.
     """
     if not all(math.isfinite(number) for number in (value, plus, minus)):
         raise NotAQuantity(f"{value} +{plus} -{minus}", "only finite numbers can be printed")
-    largest = max(plus, minus)
+    if min(plus, minus) < 0.0:
+        raise NotAQuantity(f"{value} +{plus} -{minus}", "an uncertainty is not negative")
     least = -12 if plain else -4
-    body = _exact(value, digits, least) if largest == 0.0 else _rounded(value, plus, minus, least)
+    with localcontext(Context(prec=3 * DOUBLE_DIGITS)):  # whatever precision the caller has set
+        exact = max(plus, minus) == 0.0
+        body = _exact(value, digits, least) if exact else _rounded(value, plus, minus, least)
     return f"{body} {unit}".strip()
 
 
@@ -184,43 +231,43 @@ def _exact(value: float, digits: int, least: int) -> str:
 
 
 def _rounded(value: float, plus: float, minus: float, least: int) -> str:
-    place = _place(value, min(side for side in (plus, minus) if side > 0.0))
-    rounded = [_in_units(side, place) for side in (plus, minus)]
-    # decided on what would be printed, so that what is read back is printed alike
-    lopsided = abs(rounded[0] - rounded[1]) > max(rounded) / 10
-    sides = (plus, minus) if lopsided else (0.5 * (plus + minus),) * 2
+    """Print a number to the place of the second digit of its uncertainty.
+
+    All is decided by the numbers as printed, so that printing what was read back gives the same text.
+    """
+    number, upper, lower = (Decimal(repr(float(x))) for x in (value, plus, minus))
+    place = _place(number, upper, lower)
+    sides = _in_units(upper, place), _in_units(lower, place)
+    lopsided = 10 * abs(sides[0] - sides[1]) > max(sides)
     if not lopsided:
-        place = _place(value, sides[0])
-    power = _power(value, max(sides), place, least)
-    number, upper, lower = (_in_units(x, place) for x in (value, *sides))
-    decimals = power - place
+        upper = (upper + lower) / 2
+        place = _place(number, upper)
+        sides = (_in_units(upper, place),) * 2
+    units = int((number.scaleb(-place)).quantize(Decimal(1), ROUND_HALF_EVEN))
+    power = _power(max(abs(units), *sides), place, least)
+    shown, above, below = (f"{Decimal(n).scaleb(place - power):f}" for n in (units, *sides))
     tail = f"e{power}" if power else ""
-    shown = f"{number.scaleb(-decimals):f}"
     if not lopsided:
-        return f"{shown}({max(int(upper), 1)}){tail}"
-    sides_shown = f"+{upper.scaleb(-decimals):f} -{lower.scaleb(-decimals):f}"
-    return f"({shown} {sides_shown}){tail}" if power else f"{shown} {sides_shown}"
+        return f"{shown}({sides[0]}){tail}"
+    return f"({shown} +{above} -{below}){tail}" if power else f"{shown} +{above} -{below}"
 
 
-def _place(value: float, uncertainty: float) -> int:
-    """Return the power of ten of the last digit to print."""
-    # an uncertainty below the last digit of a double says no more than that digit
-    return max(_last_place(uncertainty), _last_place(value) - 15 if value else -400)
+def _place(number: Decimal, *sides: Decimal) -> int:
+    """Return the power of ten of the last digit to print: the second digit of the smaller side, as it is rounded.
+
+    But no further than the last digit of a double of the largest size among them.
+    """
+    second = min(Decimal(f"{side:.1e}").adjusted() for side in sides if side) - 1
+    return max(second, max(x.adjusted() for x in (number, *sides) if x) - (DOUBLE_DIGITS - 1))
 
 
-def _in_units(x: float, place: int) -> Decimal:
-    """Return x in units of a power of ten, rounded to a whole number of them."""
-    return (Decimal(repr(x)) / Decimal(1).scaleb(place)).quantize(Decimal(1), ROUND_HALF_EVEN)
+def _in_units(side: Decimal, place: int) -> int:
+    """Return a side in units of the last place; what is not zero is not printed as zero."""
+    units = int(side.scaleb(-place).quantize(Decimal(1), ROUND_HALF_EVEN))
+    return max(units, 1) if side else 0
 
 
-def _last_place(uncertainty: float) -> int:
-    """Return the power of ten of the second significant digit of an uncertainty, as it is after rounding."""
-    return Decimal(f"{uncertainty:.1e}").adjusted() - 1
-
-
-def _power(value: float, uncertainty: float, place: int, least: int) -> int:
+def _power(largest: int, place: int, least: int) -> int:
     """Return the power of ten to be split off: 0 where plain notation reads well and shows every digit."""
-    leading = Decimal(repr(max(abs(value), uncertainty))).adjusted()
-    if least <= leading <= 6 and place <= 0:
-        return 0
-    return leading
+    leading = Decimal(largest).adjusted() + place
+    return 0 if least <= leading <= 6 and place <= 0 else leading

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import datetime
 import difflib
 import hashlib
 import math
 import os
 import re
+import sys
 import tomllib
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass
@@ -21,7 +23,7 @@ from clockfall.analysis.parallax import PRIORS
 from clockfall.analysis.system import Correlation, System, Uncertain
 from clockfall.binary.constants import SECONDS_PER_DAY
 from clockfall.binary.epoch import Epoch
-from clockfall.binary.ranges import Range
+from clockfall.binary.ranges import FloatArray, Range
 from clockfall.binary.state import FIELDS
 from clockfall.effects.card import Card
 from clockfall.effects.checks import rate_units
@@ -34,12 +36,31 @@ from clockfall.files.units import UnitFault, factor
 LARGEST_FILE: Final = 2**20
 """Bytes; a system file is a page or two."""
 
-DEEPEST_BRACKETS: Final = 50
-"""A reader of TOML calls itself once for each bracket, and would run out of stack."""
+DEEPEST_NESTING: Final = 50
+"""A reader of TOML calls itself once for each bracket, and takes a dotted key's parts squared."""
+
+LONGEST_NAME: Final = 200
+"""Characters of a system's name, which heads every table."""
+
+LARGEST_DOUBLE: Final = sys.float_info.max
+"""TOML's integers have no bound."""
+
+MOST_HINTS: Final = 100
+"""Faults that get the nearest right name; in a file with more it is the wrong file, and looking is slow."""
 
 FIELD_TABLES: Final = ("orbit", "masses", "sky", "spin")
 TABLES: Final = ("system", *FIELD_TABLES, "measured", "apparent", "effects", "correlation")
-_SEXAGESIMAL: Final = re.compile(r"([+-]?)(\d{1,3}):(\d{1,2}):(\d{1,2}(?:\.\d*)?)(?:\((\d+)\))?")
+_HOMES: Final = {
+    **{"name": "system", "notes": "system", "only": "effects", "without": "effects"},
+    **{"parallax": "sky", "distance_prior": "sky"},
+}
+"""The tables of keys that are neither a field nor measured."""
+
+_SEXAGESIMAL: Final = re.compile(r"([+-]?)([0-9]{1,3}):([0-9]{1,2}):([0-9].*)")
+_STRING_OR_COMMENT: Final = re.compile(
+    r'''"""(?:\\.|[^\\])*?(?:"{3,5}|\Z)|\'{3}.*?(?:\'{3,5}|\Z)|"(?:\\[^\n]|[^"\\\n])*"?|\'[^\'\n]*\'?|\#[^\n]*''',
+    re.DOTALL,
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -87,16 +108,21 @@ def demo_system(cards: Iterable[Card]) -> SystemFile:
 
 def parse_system(text: str, cards: Iterable[Card], *, name: str = "system") -> SystemFile:
     """Read a system from text; see `read_system`."""
-    if _deepest(text) > DEEPEST_BRACKETS:
-        raise _whole(name, "TOML", f"brackets nested more than {DEEPEST_BRACKETS} deep")
     try:
-        tables = tomllib.loads(text)
+        sha256 = hashlib.sha256(text.encode()).hexdigest()
+    except UnicodeEncodeError as error:
+        raise _whole(name, "a system file (TOML text)", "text with half of a character (a lone surrogate)") from error
+    toml = text.removeprefix("\ufeff")  # some editors put this mark before UTF-8
+    if _deepest(toml) > DEEPEST_NESTING:
+        raise _whole(name, "TOML", f"brackets or keys nested more than {DEEPEST_NESTING} deep")
+    try:
+        tables = tomllib.loads(toml)
     except tomllib.TOMLDecodeError as error:
-        raise BadFile(name, [_not_toml(error, text)]) from error
+        raise BadFile(name, [_not_toml(error, toml)]) from error
     except (RecursionError, ValueError, OverflowError) as error:  # an integer too long to read, for instance
         raise _whole(name, "TOML", f"text that cannot be read ({str(error)[:80]})") from error
-    system = _Reader(tables, tuple(cards), key_lines(text)).system(name)
-    return SystemFile(system, text, hashlib.sha256(text.encode()).hexdigest(), name)
+    system = _Reader(tables, tuple(cards), key_lines(_blanked(toml, long_only=True))).system(name)
+    return SystemFile(system, text, sha256, name)
 
 
 def _whole(name: str, expected: str, found: str, hint: str = "") -> BadFile:
@@ -112,10 +138,11 @@ def _text(path: Path, name: str) -> str:
             raise _whole(name, expected, "no such file", f"did you mean {near[0]}?" if near else "")
         if not path.is_file():
             raise _whole(name, expected, "a directory" if path.is_dir() else "something that is not a regular file")
-        size = path.stat().st_size
+        with path.open("rb") as stream:
+            content = stream.read(LARGEST_FILE + 1)  # never more, whatever size the file says it has
+        size = max(path.stat().st_size, len(content))
         if size > LARGEST_FILE:
             raise _whole(name, f"{expected} of at most {LARGEST_FILE} bytes", f"{size} bytes")
-        content = path.read_bytes()
     except (OSError, ValueError) as error:
         if isinstance(error, BadFile):
             raise
@@ -132,15 +159,27 @@ def _text(path: Path, name: str) -> str:
 
 
 def _deepest(text: str) -> int:
-    """Return how deep the brackets of a text are nested at most, strings included."""
-    depth = deepest = 0
-    for character in text:
+    """Return how deep the brackets or the dotted keys of a text are nested at most."""
+    bare = _blanked(text, long_only=False)
+    deepest = max(piece.count(".") for piece in re.split(r"[\n=,{}\[\]]", bare))
+    depth = 0
+    for character in bare:
         if character in "[{":
             depth += 1
             deepest = max(deepest, depth)
         elif character in "]}":
             depth -= 1
     return deepest
+
+
+def _blanked(text: str, *, long_only: bool) -> str:
+    """Replace strings (all, or those in three quotes) and comments by the line breaks that they hold."""
+
+    def blank(token: re.Match[str]) -> str:
+        found = token[0]
+        return found if long_only and not found.startswith(('"""', "'''")) else "\n" * found.count("\n")
+
+    return _STRING_OR_COMMENT.sub(blank, text)
 
 
 def _not_toml(error: tomllib.TOMLDecodeError, text: str) -> Fault:
@@ -163,6 +202,7 @@ class _Reader:
         self.parameters = {p.name: p for card in cards for p in card.predicts}
         self.lines = lines
         self.faults: list[Fault] = []
+        self.faulty: set[str] = set()  # the keys that have a fault
 
     def system(self, file: str) -> System:
         """Return the system, or raise all faults."""
@@ -199,29 +239,40 @@ class _Reader:
 
     def fault(self, path: KeyPath, expected: str, found: str, hint: str = "") -> None:
         """Note a fault at a key path."""
-        table, key = (path[:-1], path[-1]) if len(path) > 1 else (path, "")
-        brackets = f"[{'.'.join(str(part) for part in table)}]" if table else ""
         line = next((self.lines[path[:k]] for k in range(len(path), 0, -1) if path[:k] in self.lines), None)
-        self.faults.append(Fault(f"{brackets} {key}".strip(), line, expected, found, hint))
+        self.faults.append(Fault(_shown(path), line, expected, found, hint))
+        self.faulty.add(str(path[-1]))
+
+    def nearest(self, name: str, known: Iterable[str]) -> str:
+        """Return the nearest of the known names, or ""."""
+        near = difflib.get_close_matches(name, [*known], n=1) if len(self.faults) < MOST_HINTS else []
+        return near[0] if near else ""
+
+    def did_you_mean(self, name: str, known: Iterable[str]) -> str:
+        """Return a hint with the nearest of the known names, or ""."""
+        near = self.nearest(name, known)
+        return f"did you mean {near}?" if near else ""
 
     def misplaced(self, name: str, known: Iterable[str]) -> str:
         """Return a hint for an unknown name: where it belongs, or the nearest right one."""
+        known = [*known]
         plain = name.replace("-", "_").lower()
-        if plain in FIELDS and plain not in known:
-            return f"{plain} belongs in [{FIELDS[plain].group}]"
-        if (plain in self.parameters or _rate_of(plain)) and plain not in known:
-            return f"{plain} belongs in [measured]"
+        if plain not in known and (home := self.home(plain)):
+            return f"{plain} belongs in [{home}]"
+        if plain not in known and plain in TABLES:
+            return f"[{plain}] is a table of its own"
         names = [*known, *FIELDS, *self.parameters]
-        near = difflib.get_close_matches(plain, names, n=1) or difflib.get_close_matches(name, names, n=1)
+        near = self.nearest(plain, names) or self.nearest(name, names)
         if not near:
             return ""
-        if near[0] in known:
-            return f"did you mean {near[0]}?"
-        return f"did you mean {near[0]}, which belongs in [{self.home(near[0])}]?"
+        elsewhere = "" if near in known else f", which belongs in [{self.home(near)}]"
+        return f"did you mean {near}{elsewhere}?"
 
     def home(self, name: str) -> str:
-        """Return the table in which a known name belongs."""
-        return FIELDS[name].group if name in FIELDS else "measured"
+        """Return the table in which a known name belongs, or ""."""
+        if name in FIELDS:
+            return FIELDS[name].group
+        return "measured" if name in self.parameters or _rate_of(name) else _HOMES.get(name, "")
 
     def table(self, name: str) -> dict[str, Any]:
         """Return a table of the file, empty where it is missing or no table."""
@@ -245,8 +296,11 @@ class _Reader:
             if key in table and not isinstance(table[key], str):
                 self.fault(("system", key), "text in quotes", _kind(table[key]))
         name = table.get("name")
-        if name is None:
+        if name is None and isinstance(self.tables.get("system", {}), dict):
             self.fault(("system",), '[system] with name = "..."', "no name", "the name is printed beside every number")
+        elif isinstance(name, str) and not (name.strip() and name.isprintable() and len(name) <= LONGEST_NAME):
+            expected = f"a name of one line, at most {LONGEST_NAME} printable characters"
+            self.fault(("system", "name"), expected, repr(name[: LONGEST_NAME + 1]))
         return name if isinstance(name, str) else ""
 
     def fields(self) -> tuple[dict[str, Uncertain], Epoch | None, Uncertain]:
@@ -287,16 +341,28 @@ class _Reader:
         """Return one state field in clockfall's unit."""
         name = str(path[-1])
         description = FIELDS[name]
-        if name in ("right_ascension", "declination") and isinstance(value, str):
-            match = _SEXAGESIMAL.fullmatch(value.strip())
-            if match and (int(match[3]) >= 60 or float(match[4]) >= 60.0):
-                self.fault(path, "minutes and seconds below 60", repr(value))
-                return None
-            if match:
-                return self.within(
-                    path, _angle(match, hours=name == "right_ascension"), description.within, "rad", value
-                )
+        if name in ("right_ascension", "declination") and isinstance(value, str) and ":" in value:
+            angle = self.sexagesimal(path, value, hours=name == "right_ascension")
+            return angle and self.within(path, angle, description.within, "rad", value)
         return self.quantity(path, value, description.unit, description.within)
+
+    def sexagesimal(self, path: KeyPath, text: str, *, hours: bool) -> Uncertain | None:
+        """Return an angle [rad] written with colons; the seconds may have an uncertainty, as any quantity may."""
+        expected = f'{_example(str(path[-1]), "rad")}, or degrees as in "17.2 deg"'
+        match = _SEXAGESIMAL.fullmatch(text.strip().replace("\u2212", "-"))
+        try:
+            seconds = parse_quantity(match[4] if match else "")
+        except NotAQuantity:
+            match = None
+        if not match or seconds.unit:
+            self.fault(path, expected, repr(text[:80]))
+        elif int(match[3]) >= 60 or not 0 <= seconds.value < 60:
+            self.fault(path, "minutes and seconds below 60", repr(text))
+        elif hours and (match[1] == "-" or int(match[2]) >= 24):
+            self.fault(path, "hours from 0 to 24", repr(text))
+        else:
+            return _angle(match, seconds, hours=hours)
+        return None
 
     def check_eccentricity(self, fields: dict[str, Uncertain]) -> None:
         """Refuse e and 1 - e that contradict each other; where both are given, 1 - e counts."""
@@ -312,7 +378,8 @@ class _Reader:
         """Return an instant, exactly as written, and its uncertainty [s]."""
         expected = 'an MJD (TDB) as text, such as "57241.118205(2)"'
         if not isinstance(value, str):
-            hint = f'a bare number loses digits; write "{value}"' if isinstance(value, int | float) else ""
+            is_number = isinstance(value, int | float) and not isinstance(value, bool)
+            hint = f'a bare number loses digits; write "{_number(value)}"' if is_number else ""
             self.fault(path, expected, _kind(value), hint)
             return None
         found = self.parsed(path, value, expected)
@@ -322,8 +389,7 @@ class _Reader:
             self.fault(path, expected, f"the unit {found.unit!r}", "epochs are modified Julian dates, without a unit")
             return None
         if abs(found.value) > 10**7:
-            hint = "subtract 2400000.5 from a Julian date" if 2.4e6 < found.value < 2.6e6 else ""
-            self.fault(path, expected, f"{value!r}, which is {float(found.value) / 365.25:.0f} years", hint)
+            self.fault(path, expected, f"{value!r}, more than 27000 years from MJD 0")
             return None
         if Decimal(2400000) < found.value < Decimal(2600000):
             self.fault(path, expected, f"{value!r}", "this looks like a Julian date; subtract 2400000.5")
@@ -365,9 +431,9 @@ class _Reader:
                 continue
             card = self.cards.get(name)
             if card is None:
-                hint = difflib.get_close_matches(name.replace("_", "-"), [*self.cards, "only", "without"], n=1)
                 expected = f"an installed effect, only or without (effects: {', '.join(self.cards)})"
-                self.fault(("effects", name), expected, name, f"did you mean {hint[0]}?" if hint else "")
+                hint = self.did_you_mean(name.replace("_", "-"), [*self.cards, "only", "without"])
+                self.fault(("effects", name), expected, name, hint)
             elif not isinstance(table, dict):
                 self.fault(("effects", name), f"a table, [effects.{name}]", _kind(table))
             else:
@@ -383,10 +449,9 @@ class _Reader:
             if word is None:
                 continue
             if not isinstance(word, str) or word not in choice.words:
-                near = difflib.get_close_matches(str(word), choice.words, n=1)
                 expected = f"one of {', '.join(repr(w) for w in choice.words)}"
-                path = ("effects", card.name, choice.name)
-                self.fault(path, expected, _kind(word), f"did you mean {near[0]!r}?" if near else "")
+                hint = self.did_you_mean(word, choice.words) if isinstance(word, str) else ""
+                self.fault(("effects", card.name, choice.name), expected, _kind(word), hint)
             else:
                 found[choice.name] = word
         return found
@@ -400,8 +465,7 @@ class _Reader:
             if own is None:
                 known = [item.name for items in (card.parameters, card.choices) for item in items]
                 expected = f"a parameter of {card.name}: {', '.join(known) or 'it has none'}"
-                near = difflib.get_close_matches(key.replace("-", "_"), known, n=1)
-                self.fault(path, expected, key, f"did you mean {near[0]}?" if near else "")
+                self.fault(path, expected, key, self.did_you_mean(key.replace("-", "_"), known))
             elif (quantity := self.quantity(path, value, own.unit, own.within)) is not None:
                 found[key] = quantity
         return found
@@ -411,13 +475,15 @@ class _Reader:
         names = self.table("effects").get(key)
         if names is None:
             return None
-        if not isinstance(names, list) or not all(isinstance(name, str) for name in names):
-            self.fault(("effects", key), 'a list of effects, such as ["shapiro-delay"]', _kind(names))
+        wrong = [name for name in names if not isinstance(name, str)] if isinstance(names, list) else [names]
+        if wrong:
+            within = " in the list" if isinstance(names, list) else ""
+            self.fault(("effects", key), 'a list of effects, such as ["shapiro-delay"]', _kind(wrong[0]) + within)
             return None
         for name in names:
             if name not in self.cards:
-                near = difflib.get_close_matches(name.replace("_", "-"), self.cards, n=1)
-                self.fault(("effects", key), "an installed effect", name, f"did you mean {near[0]}?" if near else "")
+                hint = self.did_you_mean(name.replace("_", "-"), self.cards)
+                self.fault(("effects", key), "an installed effect", name, hint)
         return tuple(names)
 
     # -- correlations
@@ -444,7 +510,7 @@ class _Reader:
                 )
             seen[pair] = number
             found.append(correlation)
-        self.check_matrix(found)
+        self.check_matrix(found, seen)
         return tuple(found)
 
     def correlation(
@@ -484,9 +550,8 @@ class _Reader:
         """Return the path of the quantity that a correlation names."""
         paths = addresses.get(name, [])
         if not paths:
-            near = difflib.get_close_matches(name, addresses, n=1)
-            expected = "a quantity given in this file"
-            self.fault(place, expected, name, f"did you mean {near[0]}?" if near else "")
+            if name.rpartition(".")[2] not in self.faulty:  # what is given but wrong has its fault already
+                self.fault(place, "a quantity given in this file", name, self.did_you_mean(name, addresses))
             return None
         if len(paths) > 1:
             full = " or ".join(
@@ -499,17 +564,19 @@ class _Reader:
             return None
         return paths[0]
 
-    def check_matrix(self, correlations: list[Correlation]) -> None:
-        """Refuse correlations that no set of quantities can have together."""
+    def check_matrix(self, correlations: list[Correlation], numbers: Mapping[frozenset[tuple[str, ...]], int]) -> None:
+        """Refuse correlations that no set of quantities can have together; `numbers` tells where each pair stands."""
         paths = sorted({path for c in correlations for path in (c.first, c.second)})
         matrix = np.eye(len(paths))
         for c in correlations:
             i, j = paths.index(c.first), paths.index(c.second)
             matrix[i, j] = matrix[j, i] = c.value
-        if paths and np.linalg.eigvalsh(matrix)[0] < -1e-12 * len(paths):
-            names = ", ".join(path[-1] for path in paths)
-            found = f"correlations of {names} that contradict each other"
-            self.fault(("correlation",), "a positive semi-definite matrix", found, "check signs and values")
+        wrong = [paths[k] for k in _contradicting(matrix)]
+        if wrong:
+            first = min(number for pair, number in numbers.items() if pair <= set(wrong))
+            found = f"correlations of {', '.join(path[-1] for path in wrong)} that contradict each other"
+            hint = "check signs and values"
+            self.fault(("correlation", first), "a positive semi-definite matrix", found, hint)
 
     # -- quantities
 
@@ -526,13 +593,15 @@ class _Reader:
         expected = "a quantity as text, such as " + _example(str(path[-1]), unit)
         if isinstance(value, int | float) and not isinstance(value, bool):
             if factor_or_none("", unit) is None:
-                self.fault(path, expected, f"the number {value} without a unit", f'write "{value} {_usual(unit)}"')
+                hint = f'write "{_number(value)} {_usual(unit)}"' if abs(value) <= LARGEST_DOUBLE else ""
+                self.fault(path, expected, f"{_kind(value)} without a unit", hint)
                 return None
-            found: Quantity | None = self.parsed(path, repr(value), expected)
+            found: Quantity | None = self.parsed(path, _number(value), expected)
         elif isinstance(value, str):
             found = self.parsed(path, value, expected)
         else:
-            self.fault(path, expected, _kind(value))
+            is_time = isinstance(value, datetime.date | datetime.time)
+            self.fault(path, expected, _kind(value), "write it in quotes" if is_time else "")
             return None
         if found is None:
             return None
@@ -552,9 +621,35 @@ class _Reader:
     ) -> Uncertain | None:
         """Return the quantity if its value lies inside its range."""
         if within is not None and not within.holds(quantity.value):
-            self.fault(path, within.text(str(path[-1]), unit), f"{written!r}")
+            close = path[-1] == "eccentricity" and quantity.value == 1.0
+            hint = "a double cannot tell it from 1; give one_minus_eccentricity" if close else ""
+            self.fault(path, within.text(str(path[-1]), unit), f"{written!r}", hint)
             return None
         return quantity
+
+
+def _shown(path: KeyPath) -> str:
+    """Return a key path as a fault names it: ``[orbit] eccentricity``, ``[[correlation]] 1, value``."""
+    if path[0] == "correlation" and len(path) > 1:
+        number, *rest = path[1:]
+        return ", ".join([f"[[correlation]] {int(number) + 1}", *(str(part) for part in rest)])
+    table, key = (path[:-1], str(path[-1])) if len(path) > 1 else (path, "")
+    return f"[{'.'.join(str(part) for part in table)}] {key}".strip()
+
+
+def _contradicting(matrix: FloatArray) -> list[int]:
+    """Return the rows of a smallest part of a correlation matrix that is not positive semi-definite; [] for none."""
+
+    def wrong(rows: list[int]) -> bool:
+        return bool(rows) and bool(np.linalg.eigvalsh(matrix[np.ix_(rows, rows)])[0] < -1e-12 * len(rows))
+
+    rows = list(range(len(matrix)))
+    if not wrong(rows):
+        return []
+    for row in list(rows):
+        fewer = [other for other in rows if other != row]
+        rows = fewer if wrong(fewer) else rows
+    return rows
 
 
 def factor_or_none(unit_from: str, unit_to: str) -> float | None:
@@ -603,18 +698,21 @@ def _kind(value: Any) -> str:
     if isinstance(value, str):
         return f"the text {value[:60]!r}"
     if isinstance(value, int | float):
-        return f"the number {value}"
+        return f"the number {_number(value)}"
     return f"a date or time, {value}"
 
 
-def _angle(match: re.Match[str], *, hours: bool) -> Uncertain:
-    """Return a sexagesimal angle [rad]; its uncertainty is in units of the last place of the seconds."""
-    sign, whole, minutes, seconds, digits = match.groups()
+def _number(value: float) -> str:
+    """Return a TOML number as text; Python refuses to write out an integer that is too long."""
+    return "beyond 1.8e308" if LARGEST_DOUBLE < abs(value) < math.inf else repr(value)
+
+
+def _angle(match: re.Match[str], seconds: Quantity, *, hours: bool) -> Uncertain:
+    """Return a sexagesimal angle [rad]."""
     unit = math.pi / 12.0 if hours else math.pi / 180.0
-    value = (int(whole) + int(minutes) / 60.0 + float(seconds) / 3600.0) * unit
-    last = 10.0 ** -len(seconds.partition(".")[2])
-    spread = int(digits) * last / 3600.0 * unit if digits else 0.0
-    return Uncertain(-value if sign == "-" else value, spread, spread)
+    value = (int(match[2]) + int(match[3]) / 60.0 + float(seconds.value) / 3600.0) * unit
+    plus, minus = (float(side) / 3600.0 * unit for side in (seconds.plus, seconds.minus))
+    return Uncertain(-value, minus, plus) if match[1] == "-" else Uncertain(value, plus, minus)
 
 
 def _addresses(system: System) -> dict[str, list[tuple[str, ...]]]:

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import difflib
 import math
+import re
 from functools import cache
 from typing import Any, Final
 
@@ -29,12 +30,20 @@ COMMON: Final = (
 )
 """Names that a hint may offer."""
 
+_SPELT_OUT: Final = {
+    **{"days": "d", "hours": "h", "minutes": "min", "seconds": "s", "secs": "s", "sec": "s"},
+    **{"years": "yr", "yrs": "yr", "degree": "deg", "degrees": "deg", "radians": "rad", "arcseconds": "arcsec"},
+    **{"light-seconds": "ls", "lightseconds": "ls", "solarmass": "Msun", "solarmasses": "Msun"},
+}
+"""How people write units that astropy knows by their symbols alone."""
+
 _CF: Final = {
     "": "1",
     "s/s": "1",
     "ls": f"{SPEED_OF_LIGHT!r} m",
     "Msun": f"{SOLAR_MASS!r} kg",
     "Msun ls2": f"{SOLAR_MASS * SPEED_OF_LIGHT**2!r} kg m2",
+    **{unit: unit for unit in ("s", "rad", "1")},
 }
 
 
@@ -77,7 +86,15 @@ def factor(unit_from: str, unit_to: str) -> float:
     for candidate in (source, *(source * light**power for power in (1, -1, 2, -2))):
         if candidate.is_equivalent(target):
             return float(candidate.to(target))
-    raise UnitFault(f"a unit that converts to {unit_to!r}", f"the unit {unit_from!r}")
+    hint = f"for instance {', '.join(_of_the_kind(unit_to))}" if _of_the_kind(unit_to) else ""
+    raise UnitFault(f"a unit that converts to {unit_to!r}", f"the unit {unit_from!r}", hint)
+
+
+@cache
+def _of_the_kind(unit: str) -> tuple[str, ...]:
+    """Return the common units that are of the same kind as `unit`, without the detour over c = 1."""
+    target = _parse(unit)
+    return tuple(name for name in COMMON if not _is_pure(target) and _parse(name).is_equivalent(target))
 
 
 def convert(value: float, unit_from: str, unit_to: str) -> float:
@@ -86,12 +103,21 @@ def convert(value: float, unit_from: str, unit_to: str) -> float:
 
 
 def cf_units(unit: str) -> str:
-    """Return `unit` as the CF conventions write it, for a result file."""
+    """Return `unit` as the CF conventions write it, for a result file.
+
+    A unit that is none is returned as it stands, so that no result is lost for it.
+    """
     if unit in _CF:
         return _CF[unit]
     numerator, _, denominator = unit.partition("/")
-    base = _CF.get(numerator, numerator)
-    return f"{base} {denominator}-1" if denominator else base
+    if numerator in _CF and denominator == "s":
+        return f"{_CF[numerator]} s-1"
+    try:
+        base = _parse(unit).decompose()
+    except UnitFault:
+        return unit
+    powers = [f"{name}{power if power != 1 else ''}" for name, power in zip(base.bases, base.powers, strict=True)]
+    return " ".join([*([] if base.scale == 1.0 and powers else [f"{base.scale!r}"]), *powers])
 
 
 def _example(unit: str) -> str:
@@ -144,7 +170,13 @@ def _is_pure(unit: Any) -> bool:
 
 @cache
 def _parse(text: str) -> Any:
-    """Read a unit: factors separated by blanks, "*" or ".", each with an optional power, over at most one "/"."""
+    """Read a unit: factors separated by blanks, "*" or ".", each with an optional power, over at most one "/".
+
+    Raises
+    ------
+    UnitFault
+        Not of that form, or with a name that is no unit.
+    """
     from astropy import units as u  # as above
 
     if not text or text == "1":
@@ -160,15 +192,24 @@ def _product(text: str, whole: str) -> Any:
     from astropy import units as u  # as above
 
     product = u.dimensionless_unscaled
-    for word in text.replace("*", " ").replace(".", " ").replace("^", "").split():
+    for word in text.replace("**", "^").replace("*", " ").replace(".", " ").replace("^", "").split():
         name = word.rstrip("-0123456789")
         power = word[len(name) :] or "1"
-        if name == "" and power == "1":
+        if word == "1":
             continue
         try:
-            product = product * (_names().get(name) or u.Unit(name)) ** int(power)
+            product = product * _named(name) ** int(power)
         except (ValueError, TypeError, OverflowError) as error:
-            near = difflib.get_close_matches(name, COMMON, n=3)
-            hint = f"did you mean {' or '.join(near)}?" if near else "for instance d, deg/yr, kpc, Msun"
+            near = _SPELT_OUT.get(name.lower()) or " or ".join(difflib.get_close_matches(name, COMMON, n=3))
+            hint = f"did you mean {near}?" if near else "for instance d, deg/yr, kpc, Msun"
             raise UnitFault("a known unit", f"the unit {whole!r}", hint) from error
     return product
+
+
+def _named(name: str) -> Any:
+    """Return the unit of that name; raises ValueError where there is none."""
+    from astropy import units as u  # as above
+
+    if not re.fullmatch(r"[A-Za-z_%]+", name):  # astropy would read numbers and whole expressions too
+        raise ValueError("not a name")
+    return _names().get(name) or u.Unit(name)
