@@ -23,13 +23,13 @@ DELLER = Uncertain(0.24 * MAS, 0.06 * MAS, 0.08 * MAS)  # Deller et al. 2018, Ap
 
 def test_a_plain_parallax_is_its_reciprocal() -> None:
     """1 mas is 1 kpc by definition; the quantiles of 0.24(+6-8) mas are the reciprocals of the parallax's."""
-    assert distances(Uncertain(MAS), None, "none").tolist() == [pytest.approx(KPC, rel=1e-15)]
+    assert distances(Uncertain(MAS), None, "none").tolist() == [pytest.approx(KPC, rel=1e-15, abs=0.0)]
     d = distances(DELLER, SCORES, "none")
-    assert d[0] == pytest.approx(KPC / 0.24, rel=1e-12)
+    assert d[0] == pytest.approx(KPC / 0.24, rel=1e-12, abs=0.0)
     low, high = np.nanquantile(d[1:], [0.158655, 0.841345])
     # the few draws at or below zero (3 sigma) shift the quantiles by a tenth of a per cent or so
-    assert low == pytest.approx(KPC / 0.30, rel=3e-3)
-    assert high == pytest.approx(KPC / 0.16, rel=1e-2)
+    assert low == pytest.approx(KPC / 0.30, rel=3e-3, abs=0.0)
+    assert high == pytest.approx(KPC / 0.16, rel=1e-2, abs=0.0)
     assert np.isnan(d).sum() == pytest.approx(20000 * 0.00135, abs=3)  # the normal distribution beyond 3 sigma
 
 
@@ -41,8 +41,8 @@ def test_the_volume_prior_by_weighting() -> None:
     mass = np.cumsum(np.exp(-0.5 * (off / sigma) ** 2) / sigma * d**2)
     expected = np.interp([0.158655, 0.5, 0.841345], mass / mass[-1], d)
     found = distances(DELLER, SCORES, "volume") / KPC
-    assert np.quantile(found[1:], [0.158655, 0.5, 0.841345]) == pytest.approx(expected, rel=2e-3)  # both grids
-    assert found[0] == pytest.approx(expected[1], rel=1e-3)
+    assert np.quantile(found[1:], [0.158655, 0.5, 0.841345]) == pytest.approx(expected, rel=2e-3, abs=0.0)  # both grids
+    assert found[0] == pytest.approx(expected[1], rel=1e-3, abs=0.0)
     assert found.max() <= FARTHEST / KPC
 
 
@@ -51,14 +51,14 @@ def test_the_volume_prior_fades_with_precision() -> None:
     parallax = Uncertain(MAS, 0.01 * MAS, 0.01 * MAS)
     found = distances(parallax, SCORES, "volume") / KPC
     # p(parallax) goes as parallax^-4 times the normal: its peak lies 4 sigma^2/parallax lower
-    assert found[0] - 1.0 == pytest.approx(4e-4, rel=0.1)
+    assert found[0] - 1.0 == pytest.approx(4e-4, rel=0.1, abs=0.0)
 
 
 def test_draws_of_a_parallax() -> None:
     """In a sample the distance is there, and draws without one are set aside and counted."""
     sample = draw(System("x", {}, parallax=DELLER), ())
     (d,) = sample.state.known("distance")
-    assert d[0] == pytest.approx(KPC / 0.24, rel=1e-12)
+    assert d[0] == pytest.approx(KPC / 0.24, rel=1e-12, abs=0.0)
     assert sample.set_aside["parallax"] == np.sum(~sample.possible)
     assert np.all(d > 0)
 
@@ -76,7 +76,7 @@ def test_reading_a_parallax() -> None:
     cards = load_host().cards
     system = parse_system(f'{BASE}parallax = "0.24 +0.06 -0.08 mas"\ndistance_prior = "volume"\n', cards).system
     assert system.parallax is not None
-    assert system.parallax.minus == pytest.approx(0.08 * MAS, rel=1e-12)
+    assert system.parallax.minus == pytest.approx(0.08 * MAS, rel=1e-12, abs=0.0)
     assert system.distance_prior == "volume"
 
 
