@@ -8,10 +8,9 @@ import hashlib
 import math
 import os
 import re
-import sys
 import tomllib
 from collections.abc import Callable, Iterable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from decimal import Decimal
 from importlib import resources
 from pathlib import Path
@@ -20,17 +19,18 @@ from typing import Any, Final, Literal
 import numpy as np
 
 from clockfall.analysis.parallax import PRIORS
-from clockfall.analysis.system import Correlation, System, Uncertain
+from clockfall.analysis.system import System, Uncertain
 from clockfall.binary.constants import SECONDS_PER_DAY
 from clockfall.binary.epoch import Epoch
-from clockfall.binary.ranges import FloatArray, Range
+from clockfall.binary.ranges import Range
 from clockfall.binary.state import FIELDS
 from clockfall.effects.card import Card
 from clockfall.effects.checks import rate_units
 from clockfall.errors import BadInput
+from clockfall.files.correlations import CorrelationReader
 from clockfall.files.faults import BadFile, Fault
 from clockfall.files.quantity import NotAQuantity, Quantity, parse_quantity
-from clockfall.files.toml_lines import KeyPath, key_lines
+from clockfall.files.toml_text import LARGEST_DOUBLE, KeyPath, deepest_nesting, key_lines, kind_of, number_text
 from clockfall.files.units import UnitFault, factor
 
 LARGEST_FILE: Final = 2**20
@@ -41,9 +41,6 @@ DEEPEST_NESTING: Final = 50
 
 LONGEST_NAME: Final = 200
 """Characters of a system's name, which heads every table."""
-
-LARGEST_DOUBLE: Final = sys.float_info.max
-"""TOML's integers have no bound."""
 
 MOST_HINTS: Final = 100
 """Faults that get the nearest right name; in a file with more it is the wrong file, and looking is slow."""
@@ -57,10 +54,6 @@ _HOMES: Final = {
 """The tables of keys that are neither a field nor measured."""
 
 _SEXAGESIMAL: Final = re.compile(r"([+-]?)([0-9]{1,3}):([0-9]{1,2}):([0-9].*)")
-_STRING_OR_COMMENT: Final = re.compile(
-    r'''"""(?:\\.|[^\\])*?(?:"{3,5}|\Z)|\'{3}.*?(?:\'{3,5}|\Z)|"(?:\\[^\n]|[^"\\\n])*"?|\'[^\'\n]*\'?|\#[^\n]*''',
-    re.DOTALL,
-)
 
 
 @dataclass(frozen=True, slots=True)
@@ -113,7 +106,7 @@ def parse_system(text: str, cards: Iterable[Card], *, name: str = "system") -> S
     except UnicodeEncodeError as error:
         raise _whole(name, "a system file (TOML text)", "text with half of a character (a lone surrogate)") from error
     toml = text.removeprefix("\ufeff")  # some editors put this mark before UTF-8
-    if _deepest(toml) > DEEPEST_NESTING:
+    if deepest_nesting(toml) > DEEPEST_NESTING:
         raise _whole(name, "TOML", f"brackets or keys nested more than {DEEPEST_NESTING} deep")
     try:
         tables = tomllib.loads(toml)
@@ -121,7 +114,7 @@ def parse_system(text: str, cards: Iterable[Card], *, name: str = "system") -> S
         raise BadFile(name, [_not_toml(error, toml)]) from error
     except (RecursionError, ValueError, OverflowError) as error:  # an integer too long to read, for instance
         raise _whole(name, "TOML", f"text that cannot be read ({str(error)[:80]})") from error
-    system = _Reader(tables, tuple(cards), key_lines(_blanked(toml, long_only=True))).system(name)
+    system = _Reader(tables, tuple(cards), key_lines(toml)).system(name)
     return SystemFile(system, text, sha256, name)
 
 
@@ -156,30 +149,6 @@ def _text(path: Path, name: str) -> str:
         kind = "an HDF5 file" if content.startswith(b"\x89HDF") else "bytes that are not UTF-8 text"
         hint = "read a result with 'clockfall show'" if content.startswith(b"\x89HDF") else ""
         raise BadFile(name, [Fault("", line, expected, kind, hint)]) from error
-
-
-def _deepest(text: str) -> int:
-    """Return how deep the brackets or the dotted keys of a text are nested at most."""
-    bare = _blanked(text, long_only=False)
-    deepest = max(piece.count(".") for piece in re.split(r"[\n=,{}\[\]]", bare))
-    depth = 0
-    for character in bare:
-        if character in "[{":
-            depth += 1
-            deepest = max(deepest, depth)
-        elif character in "]}":
-            depth -= 1
-    return deepest
-
-
-def _blanked(text: str, *, long_only: bool) -> str:
-    """Replace strings (all, or those in three quotes) and comments by the line breaks that they hold."""
-
-    def blank(token: re.Match[str]) -> str:
-        found = token[0]
-        return found if long_only and not found.startswith(('"""', "'''")) else "\n" * found.count("\n")
-
-    return _STRING_OR_COMMENT.sub(blank, text)
 
 
 def _not_toml(error: tomllib.TOMLDecodeError, text: str) -> Fault:
@@ -230,10 +199,10 @@ class _Reader:
             only=only,
             without=without or (),
         )
-        correlations = self.correlations(system)
+        correlations = CorrelationReader(self, system).read(self.tables.get("correlation", []))
         if self.faults:
             raise BadFile(file, self.faults)
-        return System(**{**{n: getattr(system, n) for n in System.__slots__}, "correlations": correlations})
+        return replace(system, correlations=correlations)
 
     # -- faults and places
 
@@ -279,7 +248,7 @@ class _Reader:
         found = self.tables.get(name, {})
         if isinstance(found, dict):
             return found
-        self.fault((name,), f"a table, [{name}]", _kind(found))
+        self.fault((name,), f"a table, [{name}]", kind_of(found))
         return {}
 
     # -- tables
@@ -294,7 +263,7 @@ class _Reader:
                 )
         for key in ("name", "notes"):
             if key in table and not isinstance(table[key], str):
-                self.fault(("system", key), "text in quotes", _kind(table[key]))
+                self.fault(("system", key), "text in quotes", kind_of(table[key]))
         name = table.get("name")
         if name is None and isinstance(self.tables.get("system", {}), dict):
             self.fault(("system",), '[system] with name = "..."', "no name", "the name is printed beside every number")
@@ -309,14 +278,14 @@ class _Reader:
         epoch, epoch_uncertainty = None, Uncertain(0.0)
         for table in FIELD_TABLES:
             known = [name for name, description in FIELDS.items() if description.group == table]
+            besides = [name for name, home in _HOMES.items() if home == table]
             for key, value in self.table(table).items():
                 path = (table, key)
-                if table == "sky" and key in ("parallax", "distance_prior"):
-                    continue
+                if key in besides:
+                    continue  # `parallax` reads them
                 if key not in known:
-                    also = ", parallax, distance_prior" if table == "sky" else ""
-                    expected = f"a key of [{table}]: {', '.join(known)}{also}"
-                    self.fault(path, expected, key, self.misplaced(key, [*known, *also.split(", ")[1:]]))
+                    expected = f"a key of [{table}]: {', '.join([*known, *besides])}"
+                    self.fault(path, expected, key, self.misplaced(key, [*known, *besides]))
                 elif key == "periastron_epoch":
                     epoch, epoch_uncertainty = self.epoch(path, value) or (None, epoch_uncertainty)
                 elif (found := self.field(path, value)) is not None:
@@ -331,7 +300,7 @@ class _Reader:
         sky = self.table("sky")
         prior = sky.get("distance_prior", "none")
         if prior not in PRIORS:
-            self.fault(("sky", "distance_prior"), "'none' or 'volume'", _kind(prior))
+            self.fault(("sky", "distance_prior"), "'none' or 'volume'", kind_of(prior))
         elif "distance_prior" in sky and "parallax" not in sky:
             self.fault(("sky", "distance_prior"), "a parallax beside it", "no parallax")
         found = self.quantity(("sky", "parallax"), sky["parallax"], "rad") if "parallax" in sky else None
@@ -379,8 +348,8 @@ class _Reader:
         expected = 'an MJD (TDB) as text, such as "57241.118205(2)"'
         if not isinstance(value, str):
             is_number = isinstance(value, int | float) and not isinstance(value, bool)
-            hint = f'a bare number loses digits; write "{_number(value)}"' if is_number else ""
-            self.fault(path, expected, _kind(value), hint)
+            hint = f'a bare number loses digits; write "{number_text(value)}"' if is_number else ""
+            self.fault(path, expected, kind_of(value), hint)
             return None
         found = self.parsed(path, value, expected)
         if found is None:
@@ -435,7 +404,7 @@ class _Reader:
                 hint = self.did_you_mean(name.replace("_", "-"), [*self.cards, "only", "without"])
                 self.fault(("effects", name), expected, name, hint)
             elif not isinstance(table, dict):
-                self.fault(("effects", name), f"a table, [effects.{name}]", _kind(table))
+                self.fault(("effects", name), f"a table, [effects.{name}]", kind_of(table))
             else:
                 choices[name] = self.own_choices(card, table)
                 found[name] = self.own_parameters(card, {k: v for k, v in table.items() if not card.choice(k)})
@@ -451,7 +420,7 @@ class _Reader:
             if not isinstance(word, str) or word not in choice.words:
                 expected = f"one of {', '.join(repr(w) for w in choice.words)}"
                 hint = self.did_you_mean(word, choice.words) if isinstance(word, str) else ""
-                self.fault(("effects", card.name, choice.name), expected, _kind(word), hint)
+                self.fault(("effects", card.name, choice.name), expected, kind_of(word), hint)
             else:
                 found[choice.name] = word
         return found
@@ -478,105 +447,13 @@ class _Reader:
         wrong = [name for name in names if not isinstance(name, str)] if isinstance(names, list) else [names]
         if wrong:
             within = " in the list" if isinstance(names, list) else ""
-            self.fault(("effects", key), 'a list of effects, such as ["shapiro-delay"]', _kind(wrong[0]) + within)
+            self.fault(("effects", key), 'a list of effects, such as ["shapiro-delay"]', kind_of(wrong[0]) + within)
             return None
         for name in names:
             if name not in self.cards:
                 hint = self.did_you_mean(name.replace("_", "-"), self.cards)
                 self.fault(("effects", key), "an installed effect", name, hint)
         return tuple(names)
-
-    # -- correlations
-
-    def correlations(self, system: System) -> tuple[Correlation, ...]:
-        """Return the correlations, each between two uncertain quantities."""
-        entries = self.tables.get("correlation", [])
-        if not isinstance(entries, list) or not all(isinstance(entry, dict) for entry in entries):
-            self.fault(
-                ("correlation",), "[[correlation]] with between and value", _kind(entries), "use double brackets"
-            )
-            return ()
-        addresses = _addresses(system)
-        seen: dict[frozenset[tuple[str, ...]], int] = {}
-        found = []
-        for number, entry in enumerate(entries):
-            correlation = self.correlation(number, entry, addresses, dict(system.quantities()))
-            if correlation is None:
-                continue
-            pair = frozenset((correlation.first, correlation.second))
-            if pair in seen:
-                self.fault(
-                    ("correlation", number), "each pair once", f"the pair of [[correlation]] {seen[pair] + 1} again"
-                )
-            seen[pair] = number
-            found.append(correlation)
-        self.check_matrix(found, seen)
-        return tuple(found)
-
-    def correlation(
-        self,
-        number: int,
-        entry: dict[str, Any],
-        addresses: Mapping[str, list[tuple[str, ...]]],
-        quantities: Mapping[tuple[str, ...], Uncertain],
-    ) -> Correlation | None:
-        """Return one correlation, or note what is wrong with it."""
-        place: KeyPath = ("correlation", number)
-        before = len(self.faults)
-        for key in entry:
-            if key not in ("between", "value"):
-                self.fault((*place, key), "between or value", key)
-        between, value = entry.get("between"), entry.get("value")
-        if not (isinstance(between, list) and len(between) == 2 and all(isinstance(b, str) for b in between)):
-            self.fault((*place, "between"), 'two keys, such as ["mass_1", "mass_2"]', _kind(between))
-            return None
-        if isinstance(value, bool) or not isinstance(value, int | float) or not -1.0 <= value <= 1.0:
-            self.fault((*place, "value"), "a number from -1 to 1", _kind(value))
-        paths = [self.address((*place, "between"), name, addresses, quantities) for name in between]
-        if len(self.faults) > before or paths[0] is None or paths[1] is None:
-            return None
-        if paths[0] == paths[1]:
-            self.fault((*place, "between"), "two different keys", between[0])
-            return None
-        return Correlation(paths[0], paths[1], float(value))  # type: ignore[arg-type]  # checked to be a number above
-
-    def address(
-        self,
-        place: KeyPath,
-        name: str,
-        addresses: Mapping[str, list[tuple[str, ...]]],
-        quantities: Mapping[tuple[str, ...], Uncertain],
-    ) -> tuple[str, ...] | None:
-        """Return the path of the quantity that a correlation names."""
-        paths = addresses.get(name, [])
-        if not paths:
-            if name.rpartition(".")[2] not in self.faulty:  # what is given but wrong has its fault already
-                self.fault(place, "a quantity given in this file", name, self.did_you_mean(name, addresses))
-            return None
-        if len(paths) > 1:
-            full = " or ".join(
-                sorted(other for other, found in addresses.items() if found[0] in paths and "." in other)
-            )
-            self.fault(place, "one quantity", f"{name}, which is given {len(paths)} times", f"write {full}")
-            return None
-        if quantities[paths[0]].exact:
-            self.fault(place, "a quantity with an uncertainty", f"{name}, which is given as exact")
-            return None
-        return paths[0]
-
-    def check_matrix(self, correlations: list[Correlation], numbers: Mapping[frozenset[tuple[str, ...]], int]) -> None:
-        """Refuse correlations that no set of quantities can have together; `numbers` tells where each pair stands."""
-        paths = sorted({path for c in correlations for path in (c.first, c.second)})
-        matrix = np.eye(len(paths))
-        for c in correlations:
-            i, j = paths.index(c.first), paths.index(c.second)
-            matrix[i, j] = matrix[j, i] = c.value
-        wrong = [paths[k] for k in _contradicting(matrix)]
-        if wrong:
-            first = min(number for pair, number in numbers.items() if pair <= set(wrong))
-            found = f"correlations of {', '.join(path[-1] for path in wrong)} that contradict each other"
-            hint = "check signs and values"
-            self.fault(("correlation", first), "a positive semi-definite matrix", found, hint)
 
     # -- quantities
 
@@ -593,15 +470,15 @@ class _Reader:
         expected = "a quantity as text, such as " + _example(str(path[-1]), unit)
         if isinstance(value, int | float) and not isinstance(value, bool):
             if factor_or_none("", unit) is None:
-                hint = f'write "{_number(value)} {_usual(unit)}"' if abs(value) <= LARGEST_DOUBLE else ""
-                self.fault(path, expected, f"{_kind(value)} without a unit", hint)
+                hint = f'write "{number_text(value)} {_usual(unit)}"' if abs(value) <= LARGEST_DOUBLE else ""
+                self.fault(path, expected, f"{kind_of(value)} without a unit", hint)
                 return None
-            found: Quantity | None = self.parsed(path, _number(value), expected)
+            found: Quantity | None = self.parsed(path, number_text(value), expected)
         elif isinstance(value, str):
             found = self.parsed(path, value, expected)
         else:
             is_time = isinstance(value, datetime.date | datetime.time)
-            self.fault(path, expected, _kind(value), "write it in quotes" if is_time else "")
+            self.fault(path, expected, kind_of(value), "write it in quotes" if is_time else "")
             return None
         if found is None:
             return None
@@ -637,21 +514,6 @@ def _shown(path: KeyPath) -> str:
     return f"[{'.'.join(str(part) for part in table)}] {key}".strip()
 
 
-def _contradicting(matrix: FloatArray) -> list[int]:
-    """Return the rows of a smallest part of a correlation matrix that is not positive semi-definite; [] for none."""
-
-    def wrong(rows: list[int]) -> bool:
-        return bool(rows) and bool(np.linalg.eigvalsh(matrix[np.ix_(rows, rows)])[0] < -1e-12 * len(rows))
-
-    rows = list(range(len(matrix)))
-    if not wrong(rows):
-        return []
-    for row in list(rows):
-        fewer = [other for other in rows if other != row]
-        rows = fewer if wrong(fewer) else rows
-    return rows
-
-
 def factor_or_none(unit_from: str, unit_to: str) -> float | None:
     """Return the factor between two units, or None where they do not fit."""
     try:
@@ -685,42 +547,9 @@ def _example(key: str, unit: str) -> str:
     return examples.get(key, f'"1.23(4) {_usual(unit)}"' if unit not in ("", "s/s") else '"1.23(4)"')
 
 
-def _kind(value: Any) -> str:
-    """Say what kind of TOML value something is."""
-    if isinstance(value, bool):
-        return f"the boolean {str(value).lower()}"
-    if value is None:
-        return "nothing"
-    if isinstance(value, dict):
-        return "a table"
-    if isinstance(value, list):
-        return "a list"
-    if isinstance(value, str):
-        return f"the text {value[:60]!r}"
-    if isinstance(value, int | float):
-        return f"the number {_number(value)}"
-    return f"a date or time, {value}"
-
-
-def _number(value: float) -> str:
-    """Return a TOML number as text; Python refuses to write out an integer that is too long."""
-    return "beyond 1.8e308" if LARGEST_DOUBLE < abs(value) < math.inf else repr(value)
-
-
 def _angle(match: re.Match[str], seconds: Quantity, *, hours: bool) -> Uncertain:
     """Return a sexagesimal angle [rad]."""
     unit = math.pi / 12.0 if hours else math.pi / 180.0
     value = (int(match[2]) + int(match[3]) / 60.0 + float(seconds.value) / 3600.0) * unit
     plus, minus = (float(side) / 3600.0 * unit for side in (seconds.plus, seconds.minus))
     return Uncertain(-value, minus, plus) if match[1] == "-" else Uncertain(value, plus, minus)
-
-
-def _addresses(system: System) -> dict[str, list[tuple[str, ...]]]:
-    """Return what a correlation may call each quantity: its key, and its key with the table before it."""
-    addresses: dict[str, list[tuple[str, ...]]] = {}
-    for path, _ in system.quantities():
-        group = FIELDS[path[1]].group if path[1] in FIELDS else "sky"  # a parallax is no field
-        head = {"fields": group, "settings": "effects"}.get(path[0], path[0])
-        for name in (path[-1], ".".join((head, *path[1:]))):
-            addresses.setdefault(name, []).append(path)
-    return addresses
