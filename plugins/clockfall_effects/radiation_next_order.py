@@ -5,9 +5,8 @@ from __future__ import annotations
 from typing import Final
 
 import numpy as np
+from numpy.polynomial.polynomial import polyval
 
-from clockfall.binary.constants import T_SUN
-from clockfall.binary.ranges import FloatArray
 from clockfall.binary.state import BinaryState
 from clockfall.effects import Card, Rate, Rates, hook
 
@@ -37,21 +36,13 @@ TIMES_NU: Final = (924.0, 3381.0, 1659.0 / 4.0, -259.0 / 4.0)
 TIMES_D: Final = (0.0, 3297.0, 4221.0, 2331.0 / 8.0)
 
 
-def _even(coefficients: tuple[float, ...], e_2: FloatArray) -> FloatArray:
-    """Return a polynomial in e^2."""
-    value = coefficients[-1] * e_2
-    for coefficient in coefficients[-2:0:-1]:
-        value = (value + coefficient) * e_2
-    return value + coefficients[0]
-
-
 @hook
 def secular_rates(state: BinaryState) -> Rates:
     """Return the correction to the rate of the orbital period [s/s]; shape batch."""
-    m_1, m_2, M, n, nu = state.known("mass_1", "mass_2", "total_mass", "mean_motion", "symmetric_mass_ratio")
+    m_1, m_2, M, nu = state.known("mass_1", "mass_2", "total_mass", "symmetric_mass_ratio")
     beta, e, s_2 = state.known("orbital_velocity", "eccentricity", "one_minus_e_squared")
     D, e_2 = (m_1 - m_2) / M, e**2
-    bracket = _even(PLAIN, e_2) - nu * _even(TIMES_NU, e_2) + D * _even(TIMES_D, e_2)
+    bracket = polyval(e_2, PLAIN) - nu * polyval(e_2, TIMES_NU) + D * polyval(e_2, TIMES_D)
     # X times the quadrupole rate, in which f cancels: -(192 pi/5) nu beta^5 f (1 - e^2)^(-7/2)
-    quadrupole_over_f = -192.0 * np.pi / 5.0 * m_1 * m_2 * (T_SUN * n) ** 2 / beta / (s_2**3 * np.sqrt(s_2))
+    quadrupole_over_f = -192.0 * np.pi / 5.0 * nu * beta**5 / (s_2**3 * np.sqrt(s_2))
     return Rates({"orbital_period": quadrupole_over_f * beta**2 / (336.0 * s_2) * bracket})

@@ -4,13 +4,12 @@ from __future__ import annotations
 
 import numpy as np
 
-from clockfall.binary.constants import SPEED_OF_LIGHT, T_SUN
+from clockfall.binary.constants import SOLAR_RADIUS, SPEED_OF_LIGHT, T_SUN
 from clockfall.binary.ranges import POSITIVE, FloatArray, Range
 from clockfall.binary.state import BinaryState
 from clockfall.effects import Card, Caution, OwnParameter, Rate, Rates, Settings, hook
 
-LIGHT_SECONDS_PER_SOLAR_RADIUS = 6.957e8 / SPEED_OF_LIGHT
-"""Nominal solar radius, IAU 2015 Resolution B3, exact [ls]."""
+LIGHT_SECONDS_PER_SOLAR_RADIUS = SOLAR_RADIUS / SPEED_OF_LIGHT
 
 
 @hook

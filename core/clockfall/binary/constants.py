@@ -40,6 +40,9 @@ ASTRONOMICAL_UNIT: Final = 149_597_870_700.0
 PARSEC: Final = ASTRONOMICAL_UNIT * 648_000.0 / math.pi
 """The parsec [m]. Exact by IAU 2015 Resolution B2 (note 4)."""
 
+SOLAR_RADIUS: Final = 6.957e8
+"""The nominal solar radius [m]. Exact by IAU 2015 Resolution B3."""
+
 CONSTANTS: Final[dict[str, tuple[float, str, str]]] = {
     "speed_of_light": (SPEED_OF_LIGHT, "m s-1", "SI, exact"),
     "nominal_solar_mass_parameter": (GM_SUN, "m3 s-2", "IAU 2015 Resolution B3, exact"),

@@ -19,6 +19,7 @@ from clockfall.binary.constants import (
     SECONDS_PER_DAY,
     SECONDS_PER_YEAR,
     SOLAR_MASS,
+    SOLAR_RADIUS,
     SPEED_OF_LIGHT,
 )
 from clockfall.errors import BadInput
@@ -97,11 +98,6 @@ def _of_the_kind(unit: str) -> tuple[str, ...]:
     return tuple(name for name in COMMON if not _is_pure(target) and _parse(name).is_equivalent(target))
 
 
-def convert(value: float, unit_from: str, unit_to: str) -> float:
-    """Return `value` in another unit; raises UnitFault as `factor` does."""
-    return value * factor(unit_from, unit_to)
-
-
 def cf_units(unit: str) -> str:
     """Return `unit` as the CF conventions write it, for a result file.
 
@@ -149,7 +145,7 @@ def _names() -> dict[str, Any]:
         "pc": unit("pc", PARSEC, u.m),
         "kpc": unit("kpc", 1e3 * PARSEC, u.m),
         "Mpc": unit("Mpc", 1e6 * PARSEC, u.m),
-        "Rsun": unit("Rsun", 6.957e8, u.m),  # nominal, IAU 2015 Resolution B3, exact
+        "Rsun": unit("Rsun", SOLAR_RADIUS, u.m),
         "Msun": unit("Msun", SOLAR_MASS, u.kg),
     }
 
