@@ -28,8 +28,8 @@ from clockfall.figures.masses_plane import WeighedMasses, masses_plane, past_the
 from clockfall.figures.periastron_shift import TimedShifts, julian_year, periastron_shift, shift_of
 from clockfall.figures.plane import Curve, Plane, close_axis, plane, whole_axis
 from clockfall.figures.saving import UnknownFormat, save
-from clockfall.files.results import CannotWrite
 from clockfall.files.system_file import demo_system, read_system
+from clockfall.files.whole import CannotWrite
 
 from .conftest import PUBLISHED
 

@@ -50,11 +50,11 @@ def budget(of: Study, rate: str) -> list[Finding]:
     def total(role: str, values: FloatArray, meaning: str) -> Finding:
         return of.finding(rate, role, values, prediction.unit, prediction.shown_in, meaning)
 
-    sums = [total("apparent", prediction.apparent, "sum of the apparent contributions")]
+    totals = [total("apparent", prediction.apparent, "sum of the apparent contributions")]
     if has_theory(prediction):
-        sums.insert(0, total("predicted_intrinsic", prediction.intrinsic, "sum of the intrinsic contributions"))
+        totals.insert(0, total("predicted_intrinsic", prediction.intrinsic, "sum of the intrinsic contributions"))
     if rate not in of.sample.measured:
-        return [*parts, *sums]
+        return [*parts, *totals]
     measured = total("measured", of.sample.measured[rate], "as measured")
     compared = comparison(of, prediction)
     renamed = {"observed": "intrinsic_observed"}
@@ -63,7 +63,22 @@ def budget(of: Study, rate: str) -> list[Finding]:
         for f in compared
         if f.role != "predicted"
     ]
-    return [*parts, *sums, measured, *kept]
+    return [*parts, *totals, measured, *kept]
+
+
+_SUMS = (
+    ("predicted_intrinsic", "predicted", "intrinsic"),
+    ("apparent", "apparent parts", "apparent"),
+    ("measured", "measured", "as seen"),
+    ("intrinsic_observed", "measured, apparent off", "intrinsic"),
+)
+
+
+def sums(outcome: Outcome, rate: str) -> list[tuple[str, str, Finding]]:
+    """Return what stands below the contributions to a rate: (words, nature, finding); without apparent parts less."""
+    has_apparent = any(part.nature == "apparent" for part in outcome.contributions(rate))
+    kept = [row for row in _SUMS if has_apparent or row[0] in ("predicted_intrinsic", "measured")]
+    return [(label, nature, f) for role, label, nature in kept if (f := outcome.get(rate, role))]
 
 
 def has_theory(prediction: Prediction | None) -> bool:

@@ -12,6 +12,7 @@ from types import MappingProxyType
 from typing import Any, Final
 
 import numpy as np
+import numpy.typing as npt
 
 from clockfall.analysis.parallax import distances
 from clockfall.analysis.system import Correlation, System, Uncertain
@@ -75,20 +76,24 @@ class Sample:
         """Return this sample with another state of the same shape, and where it is possible."""
         return replace(self, state=state, possible=possible)
 
-    def central(self) -> Sample:
-        """Return the central element alone, shape (1,)."""
+    def take(self, index: slice | npt.NDArray[np.intp]) -> Sample:
+        """Return some elements."""
 
-        def first(values: Mapping[str, FloatArray]) -> Mapping[str, FloatArray]:
-            return MappingProxyType({name: array[:1] for name, array in values.items()})
+        def some(values: Mapping[str, FloatArray]) -> Mapping[str, FloatArray]:
+            return MappingProxyType({name: array[index] for name, array in values.items()})
 
         return replace(
             self,
-            state=self.state.take(slice(0, 1)),
-            measured=first(self.measured),
-            apparent=first(self.apparent),
-            settings=MappingProxyType({effect: first(own) for effect, own in self.settings.items()}),
-            possible=self.possible[:1],
+            state=self.state.take(index),
+            measured=some(self.measured),
+            apparent=some(self.apparent),
+            settings=MappingProxyType({effect: some(own) for effect, own in self.settings.items()}),
+            possible=self.possible[index],
         )
+
+    def central(self) -> Sample:
+        """Return the central element alone, shape (1,)."""
+        return self.take(slice(0, 1))
 
 
 def draw(system: System, cards: tuple[Card, ...], *, draws: int = DEFAULT_DRAWS, seed: int = DEFAULT_SEED) -> Sample:

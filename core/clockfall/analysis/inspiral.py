@@ -8,7 +8,7 @@ import numpy as np
 
 from clockfall.analysis.budget import merger_time
 from clockfall.analysis.outcome import Drawn, Finding, Outcome
-from clockfall.analysis.study import Choices, Study
+from clockfall.analysis.study import Choices, Study, applied_to
 from clockfall.analysis.system import System
 from clockfall.analysis.weigh import study
 from clockfall.effects.host import Host
@@ -45,36 +45,27 @@ def inspiral(host: Host, system: System, choices: Choices | None = None) -> Outc
         of.finding("orbital_velocity", "", beta, "", "", "speed on the circular orbit of this period, in c"),
         of.finding("chirp_mass", "", chirp_mass, "Msun", "Msun", "chirp mass"),
     ]
-    return of.outcome([*findings, *_stages(host, of)], {}, cautions)
+    stages = _stages(host, of, merger[0].drawn.central) if merger else []
+    return of.outcome([*findings, *stages], {}, cautions)
 
 
-def _stages(host: Host, of: Study) -> list[Finding]:
-    """Return the central binary's orbit at each stage of its way."""
+def _stages(host: Host, of: Study, T: float) -> list[Finding]:
+    """Return the central binary's orbit at each stage of its way to merger after T [s]."""
     central = of.sample.central()
-    state = central.state.take(np.array(0))
-    choices = of.choices
-    settings = {
-        effect: {name: value if isinstance(value, str) else float(value[0]) for name, value in own.items()}
-        for effect, own in central.own.items()
-    }
-    applied = host.apply(state, settings, only=choices.only, without=choices.without)
-    offered = applied.closed_form_track(np.empty(0))
+    times = T * np.array(STAGES)
+    offered = applied_to(host, central, of.choices).closed_form_track(times)
     if offered is None:
         return []
-    times = float(offered[1].merger_time) * np.array(STAGES)
-    second = applied.closed_form_track(times)
-    if second is None:
-        return []
-    track = second[1]
-    separation = state.replace(orbital_period=track.orbital_period).relative_semi_major_axis
+    period, eccentricity = offered[1].orbital_period[0], offered[1].eccentricity[0]
+    separation = central.state.replace(orbital_period=period).relative_semi_major_axis
     nothing = np.empty(0)
     found = []
     for k, share in enumerate(STAGES):
         after = f"after {share:.1%} of the time to merger"
         found += [
             Finding("time", f"stage_{k}", Drawn(float(times[k]), nothing), "s", "yr", after),
-            Finding("orbital_period", f"stage_{k}", Drawn(float(track.orbital_period[k]), nothing), "s", "s", after),
-            Finding("eccentricity", f"stage_{k}", Drawn(float(track.eccentricity[k]), nothing), "", "", after),
+            Finding("orbital_period", f"stage_{k}", Drawn(float(period[k]), nothing), "s", "s", after),
+            Finding("eccentricity", f"stage_{k}", Drawn(float(eccentricity[k]), nothing), "", "", after),
         ]
         if separation is not None:
             drawn = Drawn(float(separation[k]), nothing)

@@ -11,7 +11,7 @@ import numpy as np
 
 from clockfall.analysis.draws import Sample
 from clockfall.analysis.outcome import Drawn, Finding, Said
-from clockfall.analysis.study import Choices, Study, predictions
+from clockfall.analysis.study import Choices, Study, predicted_at
 from clockfall.analysis.system import System, Uncertain
 from clockfall.analysis.weigh import study
 from clockfall.binary.ranges import BoolArray, FloatArray
@@ -87,12 +87,9 @@ def _require_measured(system: System, rate: str) -> None:
 
 
 def _mismatch(host: Host, of: Study, sample: Sample, field: str, rate: str) -> Mismatch:
-    choices = of.choices
-
     def mismatch(values: FloatArray) -> FloatArray:
         state = sample.state.replace(**{field: values})
-        applied = host.apply(state, sample.own, only=choices.only, without=choices.without)
-        predicted = predictions(applied, sample.apparent).get(rate)
+        predicted = predicted_at(host, sample, of.choices, state).get(rate)
         if predicted is None:
             raise BadInput(f"no active effect contributes to {rate}")
         return sample.measured[rate] - predicted.total

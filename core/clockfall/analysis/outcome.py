@@ -92,6 +92,11 @@ class Finding:
     sources: tuple[str, ...] = ()
 
     @property
+    def whose(self) -> str:
+        """Whose contribution it is, in words."""
+        return "given in the file" if self.effect == "given" else self.effect
+
+    @property
     def name(self) -> str:
         """A name of its own within an outcome, fit for a file."""
         if self.role == "contribution":

@@ -26,7 +26,7 @@ import numpy.typing as npt
 from clockfall.analysis.draws import DEFAULT_SEED, Sample
 from clockfall.analysis.masses import HEAVIEST, LIGHTEST, search_masses
 from clockfall.analysis.outcome import LOWER_QUANTILE
-from clockfall.analysis.study import Choices, Prediction, predictions
+from clockfall.analysis.study import Choices, Prediction, predicted_at
 from clockfall.analysis.system import Correlation, Uncertain
 from clockfall.binary.ranges import BoolArray, FloatArray
 from clockfall.effects.host import Host
@@ -488,16 +488,16 @@ def theory_of(host: Host, sample: Sample, choices: Choices, names: tuple[str, ..
     BadInput
         No active effect predicts one of them.
     """
-    drawn = _taken(sample, np.concatenate([[0], 1 + np.flatnonzero(sample.possible[1:])[:_MOST_NUISANCE_DRAWS]]))
+    drawn = sample.take(np.concatenate([[0], 1 + np.flatnonzero(sample.possible[1:])[:_MOST_NUISANCE_DRAWS]]))
 
     @cache
     def some(draws: int) -> Sample:
-        return _taken(drawn, np.arange(min(1 + draws, drawn.possible.size)))
+        return drawn.take(np.arange(min(1 + draws, drawn.possible.size)))
 
     def predicted(masses: FloatArray, draws: int, only: tuple[str, ...] | None) -> Mapping[str, Prediction]:
         inputs = some(draws)
         state = inputs.state.replace(mass_1=masses[:, :1], mass_2=masses[:, 1:])
-        return predictions(host.apply(state, inputs.own, only=only, without=choices.without), inputs.apparent)
+        return predicted_at(host, inputs, replace(choices, only=only), state)
 
     first = predicted(np.ones((1, 2)), 0, choices.only)
     if unknown := [name for name in names if name not in first]:
@@ -510,22 +510,6 @@ def theory_of(host: Host, sample: Sample, choices: Choices, names: tuple[str, ..
         return np.stack([found[name].total for name in names], axis=-1)
 
     return theory
-
-
-def _taken(sample: Sample, index: npt.NDArray[np.intp]) -> Sample:
-    """Return some elements of a sample."""
-
-    def some(values: Mapping[str, FloatArray]) -> Mapping[str, FloatArray]:
-        return MappingProxyType({name: array[index] for name, array in values.items()})
-
-    return replace(
-        sample,
-        state=sample.state.take(index),
-        measured=some(sample.measured),
-        apparent=some(sample.apparent),
-        settings=MappingProxyType({effect: some(own) for effect, own in sample.settings.items()}),
-        possible=sample.possible[index],
-    )
 
 
 def likelihood_of(

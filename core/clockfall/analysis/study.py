@@ -13,9 +13,10 @@ from clockfall.analysis.draws import DEFAULT_DRAWS, DEFAULT_SEED, Sample
 from clockfall.analysis.outcome import Drawn, Finding, Outcome, Said, UsedEffect
 from clockfall.analysis.system import System
 from clockfall.binary.ranges import FloatArray
+from clockfall.binary.state import BinaryState
 from clockfall.effects.checks import Contribution
 from clockfall.effects.contributions import Settings
-from clockfall.effects.host import Applied
+from clockfall.effects.host import Applied, Host
 
 
 @dataclass(frozen=True, slots=True)
@@ -104,6 +105,17 @@ def predictions(applied: Applied, given_apparent: Mapping[str, FloatArray]) -> M
             tuple(part.card.name for part in unused),
         )
     return MappingProxyType(summed)
+
+
+def applied_to(host: Host, sample: Sample, choices: Choices, state: BinaryState | None = None) -> Applied:
+    """Return the effects that the choices leave, applied to a sample, or to `state` in the place of its own."""
+    state = sample.state if state is None else state
+    return host.apply(state, sample.own, only=choices.only, without=choices.without)
+
+
+def predicted_at(host: Host, sample: Sample, choices: Choices, state: BinaryState) -> Mapping[str, Prediction]:
+    """Return what the effects predict of a sample whose state is another, with trial masses for instance."""
+    return predictions(applied_to(host, sample, choices, state), sample.apparent)
 
 
 @dataclass(frozen=True, slots=True)

@@ -11,7 +11,7 @@ import numpy as np
 from clockfall.analysis.draws import Sample, draw
 from clockfall.analysis.masses import HEAVIEST, LIGHTEST, Misfit, newton_masses, search_masses
 from clockfall.analysis.outcome import Drawn, Finding, Outcome, Said
-from clockfall.analysis.study import Choices, Prediction, Study, predictions
+from clockfall.analysis.study import Choices, Prediction, Study, applied_to, predicted_at, predictions
 from clockfall.analysis.system import System
 from clockfall.binary.ranges import FloatArray
 from clockfall.effects.host import Host
@@ -48,7 +48,7 @@ def study(host: Host, system: System, choices: Choices | None = None, *, weigh_a
     if weigh_anew or not given:
         used = _chosen_pair(system, choices)
         sample, cautions = _weighed(host, sample, choices, used)
-    applied = host.apply(sample.state, sample.own, only=choices.only, without=choices.without)
+    applied = applied_to(host, sample, choices)
     predicted = predictions(applied, sample.apparent)
     masses_from = "given" if not used else "weighed"
     return Study(system, choices, sample, applied, predicted, masses_from, used, cautions)
@@ -188,8 +188,7 @@ def _misfit(host: Host, sample: Sample, choices: Choices, pair: tuple[str, str])
 
     def misfit(m_1: FloatArray, m_2: FloatArray) -> FloatArray:
         state = sample.state.replace(mass_1=m_1, mass_2=m_2)
-        applied = host.apply(state, sample.own, only=choices.only, without=choices.without)
-        predicted = predictions(applied, sample.apparent)
+        predicted = predicted_at(host, sample, choices, state)
         return np.stack([_named(predicted, name) / o - 1.0 for name, o in zip(pair, observed, strict=True)], axis=-1)
 
     return misfit

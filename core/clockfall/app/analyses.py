@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from importlib import import_module
+from pathlib import Path
 from typing import Any, Final
 
 from clockfall.analysis.outcome import Outcome, Said
@@ -12,6 +13,8 @@ from clockfall.analysis.study import Choices
 from clockfall.analysis.system import System
 from clockfall.effects.host import Host
 from clockfall.errors import BadInput
+from clockfall.files.results import Result
+from clockfall.files.system_file import parse_system
 
 NAMES: Final = ("decay", "rates", "weigh", "inspiral")
 
@@ -84,3 +87,8 @@ def full_report(of: Analysis, outcome: Outcome) -> dict[str, Any]:
 
 def _caution(said: Said) -> dict[str, Any]:
     return {"effect": said.effect or None, "statement": said.text}
+
+
+def system_of(result: Result, file: Path, host: Host) -> System:
+    """Return the system that a result file was computed from, read with the effects of today."""
+    return parse_system(result.system_text, host.cards, name=f"{file} (its system file)").system

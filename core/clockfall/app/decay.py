@@ -9,24 +9,22 @@ from typing import Any
 
 import click
 
-from clockfall.analysis.budget import DECAY, decay
-from clockfall.analysis.inverse import limit_of, solve_for
+from clockfall.analysis import inverse
+from clockfall.analysis.budget import DECAY, decay, sums
 from clockfall.analysis.outcome import Finding, Outcome
 from clockfall.analysis.study import Choices
 from clockfall.analysis.system import System
 from clockfall.app.analyses import Analysis, Block
 from clockfall.app.numbers import (
-    aligned,
     as_json,
     as_text,
-    common_power,
-    effect_label,
     finite,
     time_unit,
     unit_heading,
 )
 from clockfall.app.options import Wishes, analysis_options, run_analysis
 from clockfall.effects.host import Host
+from clockfall.files.shown import Shown, aligned, common_power
 
 
 def report(outcome: Outcome) -> dict[str, Any]:
@@ -61,31 +59,20 @@ def report(outcome: Outcome) -> dict[str, Any]:
     }
 
 
-_SUMS = (
-    ("predicted_intrinsic", "predicted", "intrinsic"),
-    ("apparent", "apparent parts", "apparent"),
-    ("measured", "measured", "as seen"),
-    ("intrinsic_observed", "measured, apparent off", "intrinsic"),
-)
-
-
 def blocks(outcome: Outcome) -> Iterator[Block]:
     """Yield the budget, and what follows from it."""
-    contributions = outcome.contributions(DECAY)
-    has_apparent = any(f.nature == "apparent" for f in contributions)
-    kept = [row for row in _SUMS if has_apparent or row[0] in ("predicted_intrinsic", "measured")]
-    sums = [(label, nature, f) for role, label, nature in kept if (f := outcome.get(DECAY, role))]
-    if sums:
-        power = common_power(f for _, _, f in sums)
-        shown = [*contributions, *(f for _, _, f in sums)]
+    contributions, totals = outcome.contributions(DECAY), sums(outcome, DECAY)
+    if totals:
+        power = common_power(Shown.finding(f) for _, _, f in totals)
+        shown = [*contributions, *(f for _, _, f in totals)]
         texts = aligned([as_text(f, power=power, with_unit=False) for f in shown])
         labels = [
-            *((effect_label(f), f.nature) for f in contributions),
-            *((label, nature) for label, nature, _ in sums),
+            *((f.whose, f.nature) for f in contributions),
+            *((label, nature) for label, nature, _ in totals),
         ]
         rows: list[tuple[str, ...]] = [(*label, text) for label, text in zip(labels, texts, strict=True)]
         rows.insert(len(contributions), ())
-        heading = ("effect", "nature", unit_heading(sums[0][2].shown_in, power))
+        heading = ("effect", "nature", unit_heading(totals[0][2].shown_in, power))
         yield Block(tuple(rows), heading, "Rate of the orbital period")
     yield Block(tuple(_conclusions(outcome)))
 
@@ -119,7 +106,7 @@ def headline(outcome: Outcome) -> str:
 def compute(host: Host, system: System, choices: Choices) -> Outcome:
     """Return the budget, with the answers to the inverse questions where they are put."""
     outcome = decay(host, system, choices)
-    for question, answer in ((choices.solve_for, solve_for), (choices.limit, limit_of)):
+    for question, answer in ((choices.solve_for, inverse.solve_for), (choices.limit, inverse.limit_of)):
         if question:
             findings, said = answer(host, system, choices, question)
             outcome = replace(outcome, findings=(*outcome.findings, *findings), cautions=(*said, *outcome.cautions))
@@ -138,11 +125,12 @@ ANALYSIS = Analysis("decay", compute, report, blocks, headline)
 @click.option("--solve-for", metavar="FIELD", help="Which distance, or moment_of_inertia_1, would make theory agree?")
 @click.option("--limit", metavar="EFFECT.PARAMETER", help="How large may this parameter be, at 95 %?")
 @analysis_options
-def command(system: Path | None, wishes: Wishes) -> None:
+def command(system: Path | None, solve_for: str | None, limit: str | None, wishes: Wishes) -> None:
     """Take the orbital decay of SYSTEM apart by effect.
 
     Says what each effect adds to the rate of the orbital period, takes the apparent part off the measured rate,
     compares the rest with theory, and gives the time to merger. Without masses in the file, the two bodies are
     weighed by what was measured.
     """
-    run_analysis(ANALYSIS, system, wishes)
+    choices = replace(wishes.choices, solve_for=solve_for or "", limit=limit or "")
+    run_analysis(ANALYSIS, system, replace(wishes, choices=choices))

@@ -10,6 +10,7 @@ import numpy as np
 
 from clockfall.analysis.outcome import Drawn
 from clockfall.analysis.weigh import study
+from clockfall.app.analyses import system_of
 from clockfall.effects.loading import load_host
 from clockfall.errors import BadInput
 from clockfall.figures.budget_chart import budget_chart
@@ -18,7 +19,6 @@ from clockfall.figures.periastron_shift import TimedShifts, periastron_shift
 from clockfall.figures.plane import close_axis, plane, whole_axis
 from clockfall.figures.saving import check_picture, save
 from clockfall.files.results import Result, read_result
-from clockfall.files.system_file import parse_system
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
@@ -74,7 +74,7 @@ def command(
 def _masses(found: Result, file: Path) -> Figure:
     """Draw the plane of the masses; its curves are computed anew from the result's own system file."""
     host = load_host()
-    system = parse_system(found.system_text, host.cards, name=f"{file} (its system file)").system
+    system = system_of(found, file, host)
     of = study(host, system, found.choices, weigh_anew=found.command == "weigh")
     m_1, m_2 = (Drawn.from_batch(values, of.sample.possible) for values in of.sample.state.known("mass_1", "mass_2"))
     whole = whole_axis(m_1.central, m_2.central)
@@ -86,8 +86,7 @@ def _shift(found: Result, file: Path, years: tuple[float, float] | None, shifts:
     """Draw the shift of periastron, with the user's points where they are given."""
     if years is None:
         raise BadInput("--picture shift needs --years FROM TO, for instance --years 1975 2035")
-    host = load_host()
-    system = parse_system(found.system_text, host.cards, name=f"{file} (its system file)").system
+    system = system_of(found, file, load_host())
     if "orbital_period" not in system.fields:
         raise BadInput(f"{file}: its system has no orbital_period")
     timed = None if shifts is None else TimedShifts(*_table(shifts))

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import dataclasses
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
@@ -90,8 +89,7 @@ def _gathering(command: Callable[..., Any]) -> Callable[..., Any]:
         **own: Any,
     ) -> Any:
         del debug  # read by clockfall.app.main before any option is parsed
-        inverse = {name: own.pop(name) or "" for name in ("solve_for", "limit") if name in own}
-        choices = Choices(draws, seed, only or None, without, use, **inverse)
+        choices = Choices(draws, seed, only or None, without, use)
         return command(wishes=Wishes(choices, as_json, out, overwrite, quiet, strict), **own)
 
     gathered.__name__ = command.__name__
@@ -109,8 +107,9 @@ def run_analysis(analysis: Analysis, system: Path | Callable[[Any], SystemFile] 
     """
     from clockfall.app.printing import print_outcome  # rich, 0.1 s
     from clockfall.effects.loading import load_host  # the effects
-    from clockfall.files.results import Result, check_target, current_versions, write_result
+    from clockfall.files.results import Result, current_versions, write_result
     from clockfall.files.system_file import demo_system, read_system  # units
+    from clockfall.files.whole import check_target
 
     if wishes.out is not None:
         check_target(wishes.out, overwrite=wishes.overwrite)
@@ -128,8 +127,3 @@ def run_analysis(analysis: Analysis, system: Path | Callable[[Any], SystemFile] 
     print_outcome(analysis, outcome, as_json=wishes.as_json, quiet=wishes.quiet, demo=system is None)
     if wishes.out is not None and not (wishes.as_json or wishes.quiet):
         click.echo(f"\nWritten to {wishes.out}; read it with: clockfall show {wishes.out}")
-
-
-def replaced(wishes: Wishes, **changes: Any) -> Wishes:
-    """Return `wishes` with some of them changed."""
-    return dataclasses.replace(wishes, **changes)

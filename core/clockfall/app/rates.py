@@ -11,8 +11,9 @@ import click
 from clockfall.analysis.outcome import Finding, Outcome
 from clockfall.analysis.rates import rates
 from clockfall.app.analyses import Analysis, Block
-from clockfall.app.numbers import aligned, as_json, as_text, common_power, effect_label, unit_heading
+from clockfall.app.numbers import as_json, as_text, unit_heading
 from clockfall.app.options import Wishes, analysis_options, run_analysis
+from clockfall.files.shown import Shown, aligned, common_power
 
 
 def _of_role(outcome: Outcome, role: str) -> list[Finding]:
@@ -55,11 +56,11 @@ def blocks(outcome: Outcome) -> Iterator[Block]:
     for total in _of_role(outcome, "total"):
         contributions = outcome.contributions(total.quantity)
         measured = outcome.get(total.quantity, "measured")
-        labelled = [(effect_label(f), f.nature, f) for f in contributions]
+        labelled = [(f.whose, f.nature, f) for f in contributions]
         labelled.append(("total", "", total))
         if measured:
             labelled.append(("measured", "", measured))
-        power = common_power([total])
+        power = common_power([Shown.finding(total)])
         texts = aligned([as_text(f, power=power, with_unit=False) for _, _, f in labelled])
         rows = tuple((label, nature, text) for (label, nature, _), text in zip(labelled, texts, strict=True))
         yield Block(rows, ("effect", "nature", unit_heading(total.shown_in, power)), total.quantity)

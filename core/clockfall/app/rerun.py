@@ -9,10 +9,9 @@ import click
 import numpy as np
 
 from clockfall.analysis.outcome import Finding, Outcome
-from clockfall.app.analyses import analysis
+from clockfall.app.analyses import analysis, system_of
 from clockfall.effects.loading import load_host
 from clockfall.files.results import read_result
-from clockfall.files.system_file import parse_system
 
 ROUNDING = 1e-12
 """Relative difference that another processor or library version may cause by rounding alone."""
@@ -32,7 +31,7 @@ def command(ctx: click.Context, result: Path, *, as_json: bool, quiet: bool, deb
     del debug  # read by clockfall.app.main before any option is parsed
     recorded = read_result(result)
     host = load_host()
-    system = parse_system(recorded.system_text, host.cards, name=f"{result} (its system file)").system
+    system = system_of(recorded, result, host)
     repeated = analysis(recorded.command).compute(host, system, recorded.choices)
     differences = compare(recorded.outcome, repeated)
     worst = max(differences.values(), default=0.0)

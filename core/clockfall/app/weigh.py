@@ -11,8 +11,9 @@ import click
 from clockfall.analysis.outcome import Finding, Outcome
 from clockfall.analysis.weigh import weigh
 from clockfall.app.analyses import Analysis, Block
-from clockfall.app.numbers import aligned, as_json, as_text, finite
+from clockfall.app.numbers import as_json, as_text, finite
 from clockfall.app.options import Wishes, analysis_options, run_analysis
+from clockfall.files.shown import aligned
 
 _MASSES = ("mass_1", "mass_2", "total_mass", "mass_ratio", "sin_inclination")
 

@@ -6,10 +6,11 @@ import math
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Final
 
-from clockfall.analysis.outcome import Finding, Outcome
+from clockfall.analysis.budget import sums
+from clockfall.analysis.outcome import Outcome
 from clockfall.errors import BadInput
-from clockfall.figures.numbers import Shown, aligned, common_power
 from clockfall.figures.style import BLACK, BLUE, GREY, PALE, VERMILION, WIDE, look, sheet
+from clockfall.files.shown import Shown, aligned, common_power
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -18,12 +19,6 @@ if TYPE_CHECKING:
 MOST_DECADES: Final = 9
 """How far below the largest number the axis goes; smaller numbers stand at its middle."""
 
-_SUMS: Final = (
-    ("predicted_intrinsic", "predicted", "intrinsic"),
-    ("apparent", "apparent parts", "apparent"),
-    ("measured", "measured", "as seen"),
-    ("intrinsic_observed", "measured, apparent off", "intrinsic"),
-)
 _ROW: Final = 5.4  # mm
 _SEEN: Final = 0.3  # an interval narrower than this share of its value hides behind the marker
 _AROUND: Final = 31.0  # mm: title, axis and legend
@@ -92,20 +87,14 @@ def _rate_words(rate: str) -> str:
 def _rows(outcome: Outcome, rate: str) -> tuple[list[Row], str]:
     """Return the rows from top to bottom, and their unit."""
     parts = outcome.contributions(rate)
-    has_apparent = any(part.nature == "apparent" for part in parts)
-    kept = [sum_ for sum_ in _SUMS if has_apparent or sum_[0] in ("predicted_intrinsic", "measured")]
-    sums = [(label, nature, f) for role, label, nature in kept if (f := outcome.get(rate, role))]
-    if not sums:
+    totals = sums(outcome, rate)
+    if not totals:
         raise BadInput(f"this result has no budget of {rate}; clockfall decay gives one")
-    rows = [Row(_whose(f), f.nature, Shown.finding(f), is_sum=False, place=i) for i, f in enumerate(parts)]
+    rows = [Row(f.whose, f.nature, Shown.finding(f), is_sum=False, place=i) for i, f in enumerate(parts)]
     gap = 0.6 if rows else 0.0
-    for label, nature, finding in sums:
+    for label, nature, finding in totals:
         rows.append(Row(label, nature, Shown.finding(finding), is_sum=True, place=len(rows) + gap))
-    return rows, sums[0][2].shown_in
-
-
-def _whose(finding: Finding) -> str:
-    return "given in the file" if finding.effect == "given" else finding.effect
+    return rows, totals[0][2].shown_in
 
 
 def _decades(rows: list[Row]) -> tuple[int, float]:

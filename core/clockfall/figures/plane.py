@@ -2,20 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Final
 
 import numpy as np
 
-from clockfall.analysis.draws import Sample
 from clockfall.analysis.outcome import Drawn
-from clockfall.analysis.study import Prediction, Study, predictions
+from clockfall.analysis.study import Prediction, Study, predicted_at
 from clockfall.binary.ranges import FloatArray
-from clockfall.binary.state import BinaryState
 from clockfall.effects.host import Host
 from clockfall.errors import BadInput
-from clockfall.figures.numbers import Shown
+from clockfall.files.shown import Shown
 from clockfall.files.units import factor
 
 POINTS: Final = 241
@@ -103,7 +100,7 @@ def plane(of: Study, host: Host, mass_1: FloatArray, mass_2: FloatArray) -> Plan
     """
     central = of.sample.central()
     state = central.state.replace(mass_1=mass_1[:, None, None], mass_2=np.asarray(mass_2)[None, :, None])
-    found = _predicted(of, host, central, state)
+    found = predicted_at(host, central, of.choices, state)
     names = [name for name in of.sample.measured if name in found and name in of.predicted]
     curves = [_curve(of, found[name], _on_grid(found[name].intrinsic, mass_1, mass_2)) for name in names]
     sine = state.sin_inclination
@@ -123,12 +120,6 @@ def _on_grid(values: FloatArray, mass_1: FloatArray, mass_2: FloatArray) -> Floa
 def _depends_on_mass(curve: Curve) -> bool:
     finite = curve.predicted[np.isfinite(curve.predicted)]
     return bool(finite.size and np.ptp(finite) > 0.0)
-
-
-def _predicted(of: Study, host: Host, central: Sample, state: BinaryState) -> Mapping[str, Prediction]:
-    choices = of.choices
-    applied = host.apply(state, central.own, only=choices.only, without=choices.without)
-    return predictions(applied, central.apparent)
 
 
 def _curve(of: Study, on_grid: Prediction, values: FloatArray) -> Curve:

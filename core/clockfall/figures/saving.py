@@ -2,14 +2,13 @@
 
 from __future__ import annotations
 
-import contextlib
 import os
 from pathlib import Path
 from typing import TYPE_CHECKING, Final
 
 from clockfall.errors import BadInput
 from clockfall.figures.style import look
-from clockfall.files.results import CannotWrite, check_target
+from clockfall.files.whole import check_target, written_whole
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
@@ -63,18 +62,5 @@ def save(figure: Figure, path: Path, *, overwrite: bool = False) -> None:
     """
     check_picture(path, overwrite=overwrite)
     suffix = path.suffix.lower()
-    unfinished = path.with_name(f".{path.name}.{os.getpid()}.part")
-    try:
-        with look(), unfinished.open("wb") as file:
-            figure.savefig(file, format=suffix[1:], metadata=WITHOUT_DATES[suffix])
-            file.flush()
-            os.fsync(file.fileno())
-        check_picture(path, overwrite=overwrite)
-        unfinished.replace(path)
-    except OSError as error:
-        if isinstance(error, CannotWrite):
-            raise
-        raise CannotWrite(f"{path}: {error.strerror or error}") from error
-    finally:
-        with contextlib.suppress(OSError):
-            unfinished.unlink(missing_ok=True)
+    with written_whole(path, overwrite=overwrite) as unfinished, look():
+        figure.savefig(unfinished, format=suffix[1:], metadata=WITHOUT_DATES[suffix])

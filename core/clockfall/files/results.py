@@ -6,7 +6,6 @@ checked before anything is read.
 
 from __future__ import annotations
 
-import contextlib
 import dataclasses
 import hashlib
 import json
@@ -26,8 +25,9 @@ from clockfall.analysis.draws import MOST_DRAWS
 from clockfall.analysis.outcome import Drawn, Finding, Outcome, Said, UsedEffect
 from clockfall.analysis.study import Choices
 from clockfall.binary.constants import CONSTANTS
-from clockfall.errors import BadInput, ClockfallError
+from clockfall.errors import BadInput
 from clockfall.files.units import cf_units
+from clockfall.files.whole import written_whole
 
 FORMAT_NAME: Final = "clockfall result"
 FORMAT_VERSION: Final = 1
@@ -51,10 +51,6 @@ class BadResultFile(BadInput):
         self.file = os.fspath(file)
         self.reason = reason
         super().__init__(f"{self.file}: {reason}")
-
-
-class CannotWrite(ClockfallError, OSError):
-    """A result could not be written; what was there before is untouched."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -96,20 +92,8 @@ def current_versions() -> dict[str, str]:
     }
 
 
-def check_target(path: Path, *, overwrite: bool) -> None:
-    """Raise CannotWrite where `path` could not be written; called before long work, and again by `write_result`."""
-    if path.is_dir():
-        raise CannotWrite(f"{path}: is a directory; name a file, such as {path / 'result.h5'}")
-    if path.exists() and not overwrite:
-        raise CannotWrite(f"{path}: exists already; use --overwrite to replace it")
-    if not path.parent.is_dir():
-        raise CannotWrite(f"{path}: there is no directory {path.parent}")
-
-
 def write_result(path: Path, result: Result, *, overwrite: bool = False) -> None:
     """Write a result file whole or not at all.
-
-    It is written beside its place under a temporary name, flushed to disk, and moved into place.
 
     Raises
     ------
@@ -118,23 +102,9 @@ def write_result(path: Path, result: Result, *, overwrite: bool = False) -> None
     """
     import h5py  # 0.2 s, needed only with a file
 
-    check_target(path, overwrite=overwrite)
-    unfinished = path.with_name(f".{path.name}.{os.getpid()}.part")
-    try:
-        with h5py.File(unfinished, "w", libver="earliest") as file:
-            _write(file, result)
-            file.flush()
-        with unfinished.open("rb+") as raw:
-            os.fsync(raw.fileno())
-        check_target(path, overwrite=overwrite)
-        unfinished.replace(path)
-    except OSError as error:
-        if isinstance(error, CannotWrite):
-            raise
-        raise CannotWrite(f"{path}: {error.strerror or error}") from error
-    finally:
-        with contextlib.suppress(OSError):
-            unfinished.unlink(missing_ok=True)
+    with written_whole(path, overwrite=overwrite) as unfinished, h5py.File(unfinished, "w", libver="earliest") as file:
+        _write(file, result)
+        file.flush()
 
 
 def _write(file: Any, result: Result) -> None:

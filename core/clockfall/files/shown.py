@@ -1,8 +1,9 @@
-"""Findings as numbers and text for a picture, in the unit in which people read them."""
+"""Numbers as people read them, in tables and in pictures."""
 
 from __future__ import annotations
 
 import math
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from typing import Final
 
@@ -11,12 +12,12 @@ from clockfall.files.quantity import format_quantity
 from clockfall.files.units import factor
 
 EXACT_DIGITS: Final = 7
-"""Digits shown of a number without uncertainty."""
+"""Digits shown of a number without uncertainty; --json has them all."""
 
 
 @dataclass(frozen=True, slots=True)
 class Shown:
-    """A number in the unit of its picture.
+    """A number in the unit in which it is shown.
 
     Attributes
     ----------
@@ -38,9 +39,9 @@ class Shown:
         return cls(value, max(high * scale - value, 0.0), max(value - low * scale, 0.0))
 
     @classmethod
-    def finding(cls, finding: Finding) -> Shown:
-        """Return a finding in the unit in which people read it."""
-        return cls.of(finding.drawn, factor(finding.unit, finding.shown_in))
+    def finding(cls, finding: Finding, unit: str = "") -> Shown:
+        """Return a finding in a unit; by default in that in which people read it."""
+        return cls.of(finding.drawn, factor(finding.unit, unit or finding.shown_in))
 
     @property
     def uncertainty(self) -> float:
@@ -55,14 +56,14 @@ class Shown:
         return format_quantity(value, plus, minus, unit, digits=EXACT_DIGITS, plain=power != 0)
 
 
-def common_power(numbers: list[Shown]) -> int:
-    """Return the power of ten of the largest number; 0 where plain numbers read well."""
+def common_power(numbers: Iterable[Shown]) -> int:
+    """Return the power of ten of the largest number, for a heading; 0 where plain numbers read well."""
     largest = max((abs(n.value) for n in numbers if math.isfinite(n.value)), default=0.0)
     power = math.floor(math.log10(largest)) if largest else 0
     return 0 if -3 <= power <= 5 else power
 
 
-def aligned(texts: list[str]) -> list[str]:
+def aligned(texts: Sequence[str]) -> list[str]:
     """Pad numbers on both sides so that decimal points stand one below the other in type of even width."""
 
     def before_point(text: str) -> int:
