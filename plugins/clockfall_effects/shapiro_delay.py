@@ -16,14 +16,15 @@ def describe() -> Card:
         name="shapiro-delay",
         summary="Signals passing the companion arrive late; most where the pulsar stands behind it.",
         formula=(
-            "r = T_sun m_2,  s = sin i = x n^(2/3) T_sun^(-1/3) M^(2/3)/m_2;  "
+            "r = T_sun m_2,  s = sin i = x n^(2/3) T_sun^(-1/3) M^(2/3)/m_2 [1 + (3 - nu/3) beta^2];  "
             "ratio = s/(1 + abs(cos i)),  amplitude = r ratio^3"
         ),
         sources=(
             "Damour & Deruelle 1986, Ann. Inst. H. Poincare A 44, 263",
+            "Damour & Deruelle 1985, Ann. Inst. H. Poincare A 43, 107 (mass function to 1PN; from memory)",
             "Freire & Wex 2010, MNRAS 409, 199 (orthometric form)",
         ),
-        order="leading order; s by the Newtonian mass function, whose 1PN correction is about 3 beta^2 of itself",
+        order="r to leading order; s by the mass function to 1PN, for the anomalistic period",
         valid="beta^2 << 1; the line of sight passes the companion far outside its Schwarzschild radius",
         needs=("mass_2",),
         gives=(

@@ -228,14 +228,20 @@ class BinaryState:
     def sin_inclination(self) -> FloatArray | None:
         """The sine of the inclination [1]; from the mass function where x and both masses are known.
 
-        x n^(2/3) M^(2/3) / (T_sun^(1/3) m_2), Kepler's third law projected. It may exceed 1 where the values do
-        not belong together; whoever prints it says so.
+        x n^(2/3) M^(2/3) / (T_sun^(1/3) m_2) (1 + (3 - nu/3) beta^2): Kepler's third law projected, to first
+        post-Newtonian order for the anomalistic period (Damour & Deruelle 1985, Ann. Inst. H. Poincare A 43, 107:
+        n = (G M/a_R^3)^(1/2) [1 + (nu - 9) G M/(2 a_R c^2)], a_1 = a_R m_2/M). It may exceed 1 where the values do not
+        belong together; whoever prints it says so.
         """
-        known = self._derived("projected_semi_major_axis", "mass_2", "total_mass", "mean_motion")
+        known = self._derived(
+            "projected_semi_major_axis", "mass_2", "total_mass", "mean_motion", "symmetric_mass_ratio"
+        )
         if known is None:
             return None if self.inclination is None else np.sin(self.inclination)
-        x, m_2, M, n = known
-        return x * np.cbrt((n * M) ** 2 / T_SUN) / m_2
+        x, m_2, M, n, nu = known
+        beta_2 = np.cbrt(T_SUN * M * n) ** 2
+        s: FloatArray = x * np.cbrt((n * M) ** 2 / T_SUN) / m_2 * (1.0 + (3.0 - nu / 3.0) * beta_2)
+        return s
 
 
 def _rebuild(fields: dict[str, Any]) -> BinaryState:
