@@ -2,11 +2,19 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from typing import Final
+
 import numpy as np
 
+from clockfall.binary.constants import SOLAR_MASS, SPEED_OF_LIGHT
 from clockfall.binary.ranges import FloatArray
 from clockfall.binary.state import BinaryState
 from clockfall.effects import Card, Caution, Rate, Rates, hook
+from clockfall_effects.spin_orbit_advance import aligned_advance
+
+TYPICAL_INERTIA: Final = 1e38 / (SOLAR_MASS * SPEED_OF_LIGHT**2)
+"""1e45 g cm^2, about a neutron star's moment of inertia [Msun ls^2]."""
 
 
 @hook
@@ -42,10 +50,20 @@ def secular_rates(state: BinaryState) -> Rates:
 
 @hook
 def cautions(state: BinaryState) -> tuple[Caution, ...]:
-    """Say how large the next order is, where a good measurement would notice it."""
+    """Say how large the next orders are, where a good measurement would notice them."""
+    return tuple(_left_out(state))
+
+
+def _left_out(state: BinaryState) -> Iterator[Caution]:
     # The 2PN coefficient f_O lies between 2 and 13/2 for e < 0.7 whatever the masses, so k itself is a fair guess.
     dropped = float(np.max(advance_per_radian(state)))
-    if dropped < 1e-6:
-        return ()
-    statement = f"first order only: the rate is good to about {dropped:.0e} of itself (2PN and spin left out)"
-    return (Caution(statement, unless=("periastron-advance-second-order",)),)
+    if dropped > 1e-6:
+        statement = f"first order only: the rate is good to about {dropped:.0e} of itself (2PN left out)"
+        yield Caution(statement, unless=("periastron-advance-second-order",))
+    if state.spin_period_1 is None:
+        return
+    (n,) = state.known("mean_motion")
+    share = float(np.max(np.abs(aligned_advance(state, np.array(TYPICAL_INERTIA)) / (advance_per_radian(state) * n))))
+    if share > 1e-6:
+        statement = f"the spin of body 1 is left out: about {share:.0e} of the rate if I_1 = 1e45 g cm2"
+        yield Caution(statement, unless=("spin-orbit-advance",))

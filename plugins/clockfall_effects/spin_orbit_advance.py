@@ -41,10 +41,19 @@ def describe() -> Card:
     )
 
 
-def spin_parameter(state: BinaryState) -> FloatArray:
+def spin_parameter(state: BinaryState, I: FloatArray) -> FloatArray:
     """Return beta_S = I Omega/(T_sun m_1^2) [1], with I in Msun ls^2: c S/(G m_1^2); shape batch."""
-    m_1, I, P = state.known("mass_1", "moment_of_inertia_1", "spin_period_1")
+    m_1, P = state.known("mass_1", "spin_period_1")
     return I * (2.0 * np.pi / P) / (T_SUN * m_1**2)
+
+
+def aligned_advance(state: BinaryState, I: FloatArray) -> FloatArray:
+    """Return the rate of the longitude of periastron by an aligned spin of moment of inertia I [rad/s]; shape batch."""
+    m_1, m_2, M, n = state.known("mass_1", "mass_2", "total_mass", "mean_motion")
+    beta, s_2 = state.known("orbital_velocity", "one_minus_e_squared")
+    X_1, X_2 = m_1 / M, m_2 / M
+    g_S = X_1 * (4.0 * X_1 + 3.0 * X_2) / (3.0 * np.sqrt(s_2))
+    return -3.0 * n * beta**3 / s_2 * spin_parameter(state, I) * g_S
 
 
 def geometry(state: BinaryState, settings: Settings) -> FloatArray:
@@ -67,11 +76,8 @@ def geometry(state: BinaryState, settings: Settings) -> FloatArray:
 @hook
 def secular_rates(state: BinaryState, settings: Settings) -> Rates:
     """Return the part of the rate of the longitude of periastron that the spin adds [rad/s]; shape batch."""
-    m_1, m_2, M, n = state.known("mass_1", "mass_2", "total_mass", "mean_motion")
-    beta, s_2 = state.known("orbital_velocity", "one_minus_e_squared")
-    X_1, X_2 = m_1 / M, m_2 / M
-    g_S = X_1 * (4.0 * X_1 + 3.0 * X_2) / (3.0 * np.sqrt(s_2)) * geometry(state, settings)
-    return Rates({"longitude_of_periastron": -3.0 * n * beta**3 / s_2 * spin_parameter(state) * g_S})
+    (I,) = state.known("moment_of_inertia_1")
+    return Rates({"longitude_of_periastron": aligned_advance(state, I) * geometry(state, settings)})
 
 
 @hook
