@@ -19,7 +19,7 @@ from matplotlib.text import Text
 from clockfall.analysis.budget import DECAY, decay
 from clockfall.analysis.outcome import Drawn, Outcome
 from clockfall.analysis.study import Choices, Study
-from clockfall.analysis.weigh import study
+from clockfall.analysis.weighing import study
 from clockfall.effects.host import Host
 from clockfall.effects.loading import load_host
 from clockfall.errors import BadInput
@@ -33,7 +33,7 @@ from clockfall.files.whole import CannotWrite
 
 from .conftest import PUBLISHED
 
-FEW = Choices(draws=200)
+FEW = Choices(draws=2048)  # fewer leave the two sides of an interval apart
 HULSE_TAYLOR = PUBLISHED / "psr-b1913+16.toml"
 PERIOD = 0.322997448918 * 86400.0  # s, of the fixture
 

@@ -14,7 +14,9 @@ from mpmath import mp, mpf, pi, quad
 
 from clockfall.analysis.budget import decay as decay_of
 from clockfall.analysis.outcome import Outcome
+from clockfall.analysis.study import Choices
 from clockfall.analysis.system import Uncertain
+from clockfall.analysis.weigh import weigh as weigh_of
 from clockfall.binary.constants import SECONDS_PER_YEAR, SOLAR_MASS, SPEED_OF_LIGHT, T_SUN
 from clockfall.binary.state import BinaryState
 from clockfall.effects.loading import load_host
@@ -201,6 +203,60 @@ class TestDoublePulsarBudget:
         assert inside(central(outcome, DECAY, "ratio"), paper)
         # the published masses come without their correlation, which widens our error a little
         assert uncertainty(outcome, DECAY, "ratio") == pytest.approx(float(paper.plus), rel=0.1, abs=0.0)
+
+
+class TestDoublePulsarWeighed:
+    """The masses of the double pulsar from its advance and Shapiro shape, as Kramer et al. 2021 had them."""
+
+    SYSTEM = "psr-j0737-3039a"
+
+    @staticmethod
+    def weighed(analysed: Named, **fields: Uncertain) -> Outcome:
+        """Weigh by advance and shape; the published masses in the file are not used."""
+        pulsar = analysed("psr-j0737-3039a")
+        system = replace(pulsar.system, fields={**pulsar.system.fields, **fields})
+        return weigh_of(pulsar.host, system, Choices(use=("longitude_of_periastron_rate", "shapiro_shape")))
+
+    def test_with_the_spin(self, analysed: Named, published: Published) -> None:
+        """With the moment of inertia that the published mass loss implies, both masses lie within the published error.
+
+        They agree to a tenth of it, and so do the uncertainties, to a tenth.
+        """
+        inertia = Uncertain(1.28e45 * factor("g cm2", "Msun ls2"))
+        outcome = self.weighed(analysed, moment_of_inertia_1=inertia)
+        for name in ("mass_1", "mass_2"):
+            paper = published(self.SYSTEM, name)
+            assert inside(central(outcome, name), paper, 0.1)
+            width = 0.5 * float(paper.plus + paper.minus)
+            assert uncertainty(outcome, name) == pytest.approx(width, rel=0.1, abs=0.0)
+
+    def test_without_the_spin(self, analysed: Named, published: Published) -> None:
+        """Without the spin-orbit term the total mass is off by more than 10 sigma, and both masses by more than 3."""
+        outcome = self.weighed(analysed)
+        papers = [published(self.SYSTEM, name) for name in ("mass_1", "mass_2")]
+        total = float(sum(paper.value for paper in papers))
+        assert abs(central(outcome, "total_mass") - total) > 10.0 * uncertainty(outcome, "total_mass")
+        for name, paper in zip(("mass_1", "mass_2"), papers, strict=True):
+            assert not inside(central(outcome, name), paper, 3.0)
+
+    def test_by_the_mass_ratio(self, analysed: Named, published: Published) -> None:
+        """Advance and mass ratio R = 1.0714(11) (Kramer et al. 2006, Science 314, 97; memory) give the masses too.
+
+        They lie within one of that solution's own errors of the later masses, which is some hundred times as wide.
+        """
+        pulsar = analysed("psr-j0737-3039a")
+        inertia = Uncertain(1.28e45 * factor("g cm2", "Msun ls2"))
+        system = replace(
+            pulsar.system,
+            fields={**pulsar.system.fields, "moment_of_inertia_1": inertia},
+            measured={**pulsar.system.measured, "mass_ratio": Uncertain(1.0714, 0.0011, 0.0011)},
+        )
+        choices = Choices(use=("longitude_of_periastron_rate", "mass_ratio"))
+        outcome = weigh_of(pulsar.host, system, choices)
+        for name in ("mass_1", "mass_2"):
+            later = float(published(self.SYSTEM, name).value)
+            assert abs(central(outcome, name) - later) < uncertainty(outcome, name)
+            assert uncertainty(outcome, name) == pytest.approx(7e-4, rel=0.1, abs=0.0)  # 1.3381(7), 1.2489(7) there
 
 
 def test_hulse_taylor_cleaned_by_effects(analysed: Named, published: Published) -> None:

@@ -4,10 +4,11 @@ from __future__ import annotations
 
 import numpy as np
 
+from clockfall.analysis.comparison import comparison, contradictions
 from clockfall.analysis.outcome import Drawn, Finding, Outcome, Said
 from clockfall.analysis.study import Choices, Prediction, Study
 from clockfall.analysis.system import System
-from clockfall.analysis.weigh import comparison, study
+from clockfall.analysis.weighing import study
 from clockfall.binary.ranges import FloatArray
 from clockfall.effects.host import Host
 
@@ -37,7 +38,7 @@ def decay(host: Host, system: System, choices: Choices | None = None) -> Outcome
         of.finding("mass_2", "", m_2, "Msun", "Msun", "mass of body 2, the companion"),
     ]
     merger, cautions = merger_time(of)
-    return of.outcome([*findings, *merger], {"rate": DECAY}, [*_unexplained(of), *cautions])
+    return of.outcome([*findings, *merger], {"rate": DECAY}, [*contradictions(of), *_unexplained(of), *cautions])
 
 
 def budget(of: Study, rate: str) -> list[Finding]:

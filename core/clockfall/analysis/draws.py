@@ -72,10 +72,6 @@ class Sample:
         effects = {*self.settings, *self.choices}
         return {effect: {**self.settings.get(effect, {}), **self.choices.get(effect, {})} for effect in effects}
 
-    def with_state(self, state: BinaryState, possible: BoolArray) -> Sample:
-        """Return this sample with another state of the same shape, and where it is possible."""
-        return replace(self, state=state, possible=possible)
-
     def take(self, index: slice | npt.NDArray[np.intp]) -> Sample:
         """Return some elements."""
 

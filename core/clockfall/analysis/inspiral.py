@@ -10,7 +10,7 @@ from clockfall.analysis.budget import merger_time
 from clockfall.analysis.outcome import Drawn, Finding, Outcome
 from clockfall.analysis.study import Choices, Study, applied_to
 from clockfall.analysis.system import System
-from clockfall.analysis.weigh import study
+from clockfall.analysis.weighing import study
 from clockfall.effects.host import Host
 
 STAGES: Final = (0.0, 0.5, 0.9, 0.99, 0.999)

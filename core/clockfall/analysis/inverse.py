@@ -13,7 +13,7 @@ from clockfall.analysis.draws import Sample
 from clockfall.analysis.outcome import Drawn, Finding, Said
 from clockfall.analysis.study import Choices, Study, predicted_at
 from clockfall.analysis.system import System, Uncertain
-from clockfall.analysis.weigh import study
+from clockfall.analysis.weighing import study
 from clockfall.binary.ranges import BoolArray, FloatArray
 from clockfall.binary.state import FIELDS
 from clockfall.effects.host import Host

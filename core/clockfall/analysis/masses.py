@@ -29,7 +29,14 @@ _STILL: Final = 1e-14  # of ln m: rounding leaves some 1e-15 times the misfit's 
 _SOLVED: Final = 1e-11  # relative misfit; rounding leaves some 1e-15
 
 
-def search_masses(misfit: Misfit) -> list[FloatArray]:
+def mass_grid() -> tuple[FloatArray, FloatArray]:
+    """Return trial masses (m_1, m_2) [Msun], both of shape (121, 121): the grid on which solutions are sought."""
+    axis = np.geomspace(LIGHTEST, HEAVIEST, _GRID)
+    m_1, m_2 = np.meshgrid(axis, axis, indexing="ij")
+    return m_1, m_2
+
+
+def search_masses(misfit: Misfit, on_grid: FloatArray | None = None) -> list[FloatArray]:
     """Return every solution for one binary, the one with the largest m_1 first.
 
     Newton's method is started from each cell of a logarithmic grid from 0.01 to 300 Msun in which both misfits change
@@ -39,13 +46,18 @@ def search_masses(misfit: Misfit) -> list[FloatArray]:
     ----------
     misfit : callable
         For a single binary, shape (1,).
+    on_grid : array, shape (121, 121, 2), optional
+        The misfit on `mass_grid()`, where it is known already.
 
     Returns
     -------
     list of arrays, shape (2,) [Msun]
         Empty where no masses fit.
     """
-    starts = _cells_with_sign_changes(misfit)
+    if on_grid is None:
+        m_1, m_2 = mass_grid()
+        on_grid = misfit(m_1[..., None], m_2[..., None])[..., 0, :]
+    starts = _cells_with_sign_changes(on_grid)
     if not starts.size:
         return []
     found, solved = newton_masses(misfit, starts)
@@ -74,12 +86,15 @@ def newton_masses(misfit: Misfit, start: FloatArray) -> tuple[FloatArray, BoolAr
         Where the misfit is below 1e-11.
     """
     logs = np.log(start)
+    done: BoolArray = np.zeros(logs.shape[0], dtype=np.bool_)
     for _ in range(_ITERATIONS):
         value, jacobian = _value_and_jacobian(misfit, logs)
         before = logs
-        logs = _damped(misfit, logs, _newton_step(value, jacobian), _norm(value))
-        # a binary is done when rounding alone moves it, or when no step would better its misfit
-        if np.max(np.abs(logs - before), initial=0.0) < _STILL:
+        step = np.where(done[:, None], 0.0, _newton_step(value, jacobian))
+        logs = _damped(misfit, logs, step, _norm(value))
+        # a binary is done when rounding alone moves it, or when no step would better its misfit: it would not next time
+        done |= np.max(np.abs(logs - before), axis=1) < _STILL
+        if done.all():
             break
     solved = _norm(misfit(np.exp(logs[:, 0]), np.exp(logs[:, 1]))) < _SOLVED
     return np.where(solved[:, None], np.exp(logs), np.nan), solved
@@ -127,11 +142,9 @@ def _damped(misfit: Misfit, logs: FloatArray, step: FloatArray, before: FloatArr
     return np.where(worse[:, None], logs, trial)
 
 
-def _cells_with_sign_changes(misfit: Misfit) -> FloatArray:
-    """Return the middles of the grid's cells that may hold a solution; shape (cells, 2) [Msun]."""
+def _cells_with_sign_changes(value: FloatArray) -> FloatArray:
+    """Return the middles of the grid's cells that may hold a solution; (grid, grid, 2) -> (cells, 2) [Msun]."""
     axis = np.geomspace(LIGHTEST, HEAVIEST, _GRID)
-    m_1, m_2 = np.meshgrid(axis, axis, indexing="ij")
-    value = misfit(m_1[..., None], m_2[..., None])[..., 0, :]  # (grid, grid, 2)
     corners = np.stack([value[:-1, :-1], value[1:, :-1], value[:-1, 1:], value[1:, 1:]])
     meaning: BoolArray = np.isfinite(corners)
     low = np.min(np.where(meaning, corners, np.inf), axis=0)

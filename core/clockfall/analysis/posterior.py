@@ -96,9 +96,10 @@ class Likelihood:
         Of the normal scores of the measured values.
     blur : array, shape (parameters, parameters)
         Covariance of the predictions, in normal scores, that uncertain inputs cause; 0 where none matters. It enters
-        chi-squared; the density averages over the inputs' draws instead.
+        chi-squared, and the density too where that is not averaged over draws.
     draws : int
-        Over how many draws of the inputs the density is averaged; 0 for the central ones alone.
+        Over how many draws of the inputs the density is averaged; 0 where they are normal enough for their covariance
+        to say all, or do not matter.
     """
 
     measured: Mapping[str, Uncertain]
@@ -128,7 +129,8 @@ class Likelihood:
 
     def log_density(self, masses: FloatArray) -> FloatArray:
         """Return ln of likelihood times prior, up to a constant; -inf where it is 0; (n, 2) -> (n,)."""
-        factor = np.linalg.inv(np.linalg.cholesky(self.correlation)).T
+        covariance = self.correlation if self.draws else self.correlation + self.blur
+        factor = np.linalg.inv(np.linalg.cholesky(covariance)).T
         found = np.empty(masses.shape[0])
         step = max(1, _LANES // (1 + self.draws))
         for start in range(0, masses.shape[0], step):
@@ -284,7 +286,8 @@ class Posterior:
     mode_weights : tuple of float
         The probability of each separate mode, in the order of their chi-squared.
     nuisance_draws : int
-        Over how many draws of uncertain inputs the likelihood is averaged; 0 where none of them matters.
+        Over how many draws of uncertain inputs the likelihood is averaged; 0 where none of them matters, or where their
+        covariance says all.
     converged : bool
         Whether the last doubling of the grid moved nothing by 0.2 % of an error bar.
     edge : float
@@ -564,16 +567,36 @@ def integrate(likelihood: Likelihood, sine: Callable[[FloatArray], FloatArray] |
 
 
 def _with_inputs(likelihood: Likelihood, masses: FloatArray) -> Likelihood:
-    """Return the likelihood averaged over its inputs' draws, where they matter at these masses."""
+    """Return the likelihood averaged over its uncertain inputs, where they matter at these masses."""
     moved = _moved(likelihood, masses, _NUISANCE_DRAWS)
     if not moved.size or np.max(np.abs(moved)) <= _MATTERS:
         return likelihood
+    many = _moved(likelihood, masses, _MOST_NUISANCE_DRAWS)
+    blur = np.atleast_2d(np.cov(many, rowvar=False, bias=True))
+    if _blurs_normally(likelihood, many, np.diag(blur)):
+        return replace(likelihood, blur=blur)
     # the draws must lie densely on the scale of the measured uncertainties, or the average is a row of spikes
     spread = float(np.max(np.std(moved, axis=0)))
     draws = _NUISANCE_DRAWS * 2 ** int(np.ceil(np.log2(max(1.0, spread))))
     moved = _moved(likelihood, masses, min(draws, _MOST_NUISANCE_DRAWS))
     blur = np.atleast_2d(np.cov(moved, rowvar=False, bias=True))
     return replace(likelihood, blur=blur, draws=moved.shape[0])
+
+
+def _blurs_normally(likelihood: Likelihood, moved: FloatArray, variance: FloatArray) -> bool:
+    """Whether measurement and inputs together are as normal as quantiles to 0.5 % of the error bar need.
+
+    By the mean, skewness and excess kurtosis of their sum (the first terms of a Cornish-Fisher expansion). Where a
+    value has two sides of its own, its inputs must be small beside it.
+    """
+    total = 1.0 + variance
+    mean = np.mean(moved, axis=0)
+    away = moved - mean
+    skewness = np.mean(away**3, axis=0) / total**1.5
+    kurtosis = (np.mean(away**4, axis=0) - 3.0 * variance**2) / total**2
+    two_sided = np.array([value.plus != value.minus for value in likelihood.measured.values()])
+    normal = (np.abs(mean) < 0.005 * np.sqrt(total)) & (np.abs(skewness) < 0.03) & (np.abs(kurtosis) < 0.05)
+    return bool(np.all(normal & ~(two_sided & (variance > 0.02))))
 
 
 def _moved(likelihood: Likelihood, masses: FloatArray, draws: int) -> FloatArray:
@@ -681,7 +704,8 @@ def _least_squares(likelihood: Likelihood, logs: FloatArray) -> FloatArray:
         better = squared < best
         if not better.any() and np.all(damping > 1e3):
             break
-        small = np.max(np.abs(np.where(better, best - squared, 0.0)), initial=0.0) < 1e-9
+        gained = np.where(better, best, 0.0) - np.where(better, squared, 0.0)
+        small = np.max(gained, initial=0.0) < 1e-9
         logs, best = np.where(better[:, None], trial, logs), np.where(better, squared, best)
         damping = np.where(better, 0.2 * damping, 10.0 * damping)
         if small and better.any():

@@ -5,10 +5,11 @@ from __future__ import annotations
 from dataclasses import replace
 
 from clockfall.analysis.budget import contributions
+from clockfall.analysis.comparison import contradictions
 from clockfall.analysis.outcome import Finding, Outcome
 from clockfall.analysis.study import Choices, Prediction, Study
 from clockfall.analysis.system import System
-from clockfall.analysis.weigh import study
+from clockfall.analysis.weighing import study
 from clockfall.effects.host import Host
 
 
@@ -28,7 +29,7 @@ def rates(host: Host, system: System, choices: Choices | None = None) -> Outcome
     """
     of = study(host, system, choices)
     findings = [finding for prediction in of.predicted.values() for finding in _lines(of, prediction)]
-    return of.outcome(findings, {})
+    return of.outcome(findings, {}, contradictions(of))
 
 
 def _lines(of: Study, prediction: Prediction) -> list[Finding]:

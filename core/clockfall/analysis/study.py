@@ -190,6 +190,8 @@ class Study:
 
     def _facts(self) -> dict[str, str]:
         own = {"system": self.system.name, "masses_from": self.masses_from}
+        if self.used:
+            own["used"] = " ".join(self.used)
         epoch = self.system.periastron_epoch
         return own if epoch is None else {**own, "epoch_mjd_tdb": str(epoch.to_decimal())}
 

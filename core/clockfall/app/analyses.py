@@ -85,6 +85,12 @@ def full_report(of: Analysis, outcome: Outcome) -> dict[str, Any]:
     }
 
 
+def masses_from(outcome: Outcome) -> str:
+    """Say whether the masses were given, or by what they were weighed."""
+    used = outcome.facts.get("used", "").split()
+    return f"weighed by {' and '.join(used)}" if used else outcome.facts["masses_from"]
+
+
 def _caution(said: Said) -> dict[str, Any]:
     return {"effect": said.effect or None, "statement": said.text}
 

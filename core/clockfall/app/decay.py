@@ -14,7 +14,7 @@ from clockfall.analysis.budget import DECAY, decay, sums
 from clockfall.analysis.outcome import Finding, Outcome
 from clockfall.analysis.study import Choices
 from clockfall.analysis.system import System
-from clockfall.app.analyses import Analysis, Block
+from clockfall.app.analyses import Analysis, Block, masses_from
 from clockfall.app.numbers import (
     as_json,
     as_text,
@@ -81,7 +81,7 @@ def _conclusions(outcome: Outcome) -> Iterator[tuple[str, str]]:
     if ratio := outcome.get(DECAY, "ratio"):
         yield "measured/predicted", f"{as_text(ratio)}   {_tension(outcome)}".rstrip()
     m_1, m_2 = (as_text(outcome[name, ""], with_unit=False) for name in ("mass_1", "mass_2"))
-    yield "masses", f"m_1 = {m_1}, m_2 = {m_2} Msun ({outcome.facts['masses_from']})"
+    yield "masses", f"m_1 = {m_1}, m_2 = {m_2} Msun ({masses_from(outcome)})"
     if merger := outcome.get("merger_time"):
         yield "time to merger", as_text(merger, time_unit(merger))
     for finding in _inverse(outcome):

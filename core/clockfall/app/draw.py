@@ -9,7 +9,7 @@ import click
 import numpy as np
 
 from clockfall.analysis.outcome import Drawn
-from clockfall.analysis.weigh import study
+from clockfall.analysis.weighing import study
 from clockfall.app.analyses import system_of
 from clockfall.effects.loading import load_host
 from clockfall.errors import BadInput

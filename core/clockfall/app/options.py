@@ -42,7 +42,10 @@ def analysis_options(command: F) -> F:
         click.option("--only", multiple=True, metavar="EFFECT", help="Use this effect and no other (repeatable)."),
         click.option("--without", multiple=True, metavar="EFFECT", help="Leave this effect out (repeatable)."),
         click.option(
-            "--use", multiple=True, metavar="PARAMETER", help="Weigh the bodies by this measured parameter (twice)."
+            "--use",
+            multiple=True,
+            metavar="PARAMETER",
+            help="Weigh the bodies by this measured parameter (twice or more).",
         ),
         click.option(
             "--draws",

@@ -10,7 +10,7 @@ import click
 
 from clockfall.analysis.outcome import Finding, Outcome
 from clockfall.analysis.rates import rates
-from clockfall.app.analyses import Analysis, Block
+from clockfall.app.analyses import Analysis, Block, masses_from
 from clockfall.app.numbers import as_json, as_text, unit_heading
 from clockfall.app.options import Wishes, analysis_options, run_analysis
 from clockfall.files.shown import Shown, aligned, common_power
@@ -68,7 +68,7 @@ def blocks(outcome: Outcome) -> Iterator[Block]:
     if parameters:
         predicted = [row for f in parameters for row in _parameter_rows(outcome, f)]
         yield Block(tuple(predicted), title="Predicted parameters")
-    yield Block((("masses", outcome.facts["masses_from"]),))
+    yield Block((("masses", masses_from(outcome)),))
 
 
 def _parameter_rows(outcome: Outcome, finding: Finding) -> Iterator[tuple[str, ...]]:

@@ -1,4 +1,4 @@
-"""`clockfall weigh`: both masses from two measured parameters."""
+"""`clockfall weigh`: both masses from measured parameters."""
 
 from __future__ import annotations
 
@@ -27,7 +27,7 @@ def _plain(finding: Finding | None) -> float | None:
 
 
 def report(outcome: Outcome) -> dict[str, Any]:
-    """Return masses and tests as programs read them."""
+    """Return masses, tests and fits as programs read them."""
     masses = {name: outcome.get(name) for name in _MASSES}
     tests = []
     for name in _tested(outcome):
@@ -41,16 +41,33 @@ def report(outcome: Outcome) -> dict[str, Any]:
                 "tension_sigma": _plain(outcome.get(name, "tension_sigma")),
             }
         )
+    joint = _fit(outcome, "joint")
+    if joint is not None:
+        joint |= {name: as_json(outcome[name, "joint"]) for name in ("mass_1", "mass_2")}
     return {
         **{name: None if finding is None else as_json(finding) for name, finding in masses.items()},
         "correlation": _plain(outcome.get("mass_correlation")),
         "used": outcome.facts["used"].split(),
         "tests": tests,
+        "fit": _fit(outcome, "used"),
+        "joint_fit": joint,
+    }
+
+
+def _fit(outcome: Outcome, role: str) -> dict[str, Any] | None:
+    """Return how well the masses fit the parameters that weighed them, or (role "joint") all; None for two."""
+    if outcome.get("chi_squared", role) is None:
+        return None
+    return {
+        "chi_squared": _plain(outcome["chi_squared", role]),
+        "degrees_of_freedom": int(outcome["degrees_of_freedom", role].drawn.central),
+        "p_value": _plain(outcome["p_value", role]),
+        "pulls": {f.quantity: _plain(f) for f in outcome.findings if f.role == f"{role}_pull"},
     }
 
 
 def blocks(outcome: Outcome) -> Iterator[Block]:
-    """Yield the masses and the tests."""
+    """Yield the masses, the tests and the fits."""
     used = outcome.facts["used"].split()
     yield Block(tuple((name, as_text(outcome[name, "used"])) for name in used), ("parameter", "measured"), "Weighed by")
     found = [finding for name in _MASSES if (finding := outcome.get(name))]
@@ -59,10 +76,30 @@ def blocks(outcome: Outcome) -> Iterator[Block]:
     correlation = _plain(outcome.get("mass_correlation"))
     if correlation is not None:
         rows.append(("correlation", f"{correlation:.6f}", "of the two masses"))
+    rows += _goodness(outcome, "used")
     yield Block(tuple(rows), title="Masses")
     tests = [row for name in _tested(outcome) for row in _test_rows(outcome, name)]
     if tests:
         yield Block(tuple(tests), title="Tests by what was measured besides (apparent parts taken off)")
+    if goodness := _goodness(outcome, "joint"):
+        masses = [(name, as_text(outcome[name, "joint"]), "") for name in ("mass_1", "mass_2")]
+        pulls = [
+            (f.quantity, f"{f.drawn.central:+.2f} sigma".replace("-0.00", "+0.00"), "")
+            for f in outcome.findings
+            if f.role == "joint_pull"
+        ]
+        yield Block((*masses, *goodness, (), *pulls), title="Fit of all together, and what each is off by")
+
+
+def _goodness(outcome: Outcome, role: str) -> list[tuple[str, str, str]]:
+    fit = _fit(outcome, role)
+    if fit is None:
+        return []
+    freedom = f"for {fit['degrees_of_freedom']} degrees of freedom"
+    return [
+        ("chi-squared", f"{fit['chi_squared']:.2f}", freedom),
+        ("p-value", f"{fit['p_value']:.2g}", "chance of a larger chi-squared"),
+    ]
 
 
 def _test_rows(outcome: Outcome, name: str) -> Iterator[tuple[str, ...]]:
@@ -87,9 +124,10 @@ ANALYSIS = Analysis("weigh", weigh, report, blocks, headline)
 @click.argument("system", required=False, type=click.Path(path_type=Path))
 @analysis_options
 def command(system: Path | None, wishes: Wishes) -> None:
-    """Both masses of SYSTEM from two measured parameters.
+    """Both masses of SYSTEM from measured parameters.
 
-    Masses given in the file are not used. Every measured parameter that did not weigh the bodies is compared with
-    what the masses predict for it.
+    Those named by --use weigh the bodies, two or more; without it the two that leave the smallest area of the plane of
+    masses, the orbital decay apart. Masses given in the file are not used. Every other measured parameter is compared
+    with what the masses predict for it, and all are fitted together.
     """
     run_analysis(ANALYSIS, system, wishes)
