@@ -59,3 +59,26 @@ def test_what_cannot_be_drawn_is_said(
     """A format that is not known, a shift without years, a place that is not there: each is named."""
     said = clockfall("draw", result, "--out", result.parent / name, *options)
     assert (said.code, expected in said.err) == (code, True), said.err
+
+
+@pytest.mark.parametrize("analysis", ["decay", "weigh"])
+def test_a_picture_beside_the_numbers(clockfall: Command, tmp_path: Path, analysis: str) -> None:
+    """`--draw` draws what was computed, the same picture as `draw` makes from the result; nothing is overwritten."""
+    beside, out = tmp_path / "beside.svg", tmp_path / "result.h5"
+    said = clockfall(analysis, SYSTEM, "--draws", 256, "--draw", beside, "--out", out)
+    assert (said.code, said.err) == (0, "")
+    assert f"Drawn to {beside}" in said.out
+    assert clockfall("draw", out, "--out", tmp_path / "after.svg").code == 0
+    assert beside.read_bytes() == (tmp_path / "after.svg").read_bytes()
+    again = clockfall(analysis, SYSTEM, "--draws", 256, "--draw", beside)
+    assert (again.code, "--overwrite" in again.err) == (1, True)
+
+
+def test_the_draws_of_a_bent_posterior_are_no_ellipse(clockfall: Command, tmp_path: Path) -> None:
+    """Advance and decay allow a bent strip of masses: it is shown by its draws, and no ellipse is claimed."""
+    pair = ("--use", "longitude_of_periastron_rate", "--use", "orbital_period_rate")
+    bent, plain = tmp_path / "bent.svg", tmp_path / "plain.svg"
+    assert clockfall("weigh", SYSTEM, *pair, "--draw", bent, "-q").code == 0
+    assert clockfall("weigh", SYSTEM, "--draw", plain, "-q").code == 0
+    assert "ellipse" in plain.read_text()
+    assert "ellipse" not in bent.read_text()

@@ -22,7 +22,7 @@ from clockfall.app.numbers import (
     time_unit,
     unit_heading,
 )
-from clockfall.app.options import Wishes, analysis_options, run_analysis
+from clockfall.app.options import Wishes, analysis_options, draw_option, run_analysis
 from clockfall.effects.host import Host
 from clockfall.files.shown import Shown, aligned, common_power
 
@@ -124,8 +124,11 @@ ANALYSIS = Analysis("decay", compute, report, blocks, headline)
 @click.argument("system", required=False, type=click.Path(path_type=Path))
 @click.option("--solve-for", metavar="FIELD", help="Which distance, or moment_of_inertia_1, would make theory agree?")
 @click.option("--limit", metavar="EFFECT.PARAMETER", help="How large may this parameter be, at 95 %?")
+@draw_option
 @analysis_options
-def command(system: Path | None, solve_for: str | None, limit: str | None, wishes: Wishes) -> None:
+def command(
+    system: Path | None, solve_for: str | None, limit: str | None, picture: Path | None, wishes: Wishes
+) -> None:
     """Take the orbital decay of SYSTEM apart by effect.
 
     Says what each effect adds to the rate of the orbital period, takes the apparent part off the measured rate,
@@ -133,4 +136,4 @@ def command(system: Path | None, solve_for: str | None, limit: str | None, wishe
     weighed by what was measured.
     """
     choices = replace(wishes.choices, solve_for=solve_for or "", limit=limit or "")
-    run_analysis(ANALYSIS, system, replace(wishes, choices=choices))
+    run_analysis(ANALYSIS, system, replace(wishes, choices=choices, picture=picture))

@@ -29,6 +29,7 @@ class Wishes:
     overwrite: bool
     quiet: bool
     strict: bool
+    picture: Path | None = None
 
 
 def analysis_options(command: F) -> F:
@@ -38,7 +39,7 @@ def analysis_options(command: F) -> F:
         click.option(
             "--out", type=click.Path(path_type=Path), help="Write the result, with all draws, to this HDF5 file."
         ),
-        click.option("--overwrite", is_flag=True, help="Let --out replace a file."),
+        click.option("--overwrite", is_flag=True, help="Let --out and --draw replace a file."),
         click.option("--only", multiple=True, metavar="EFFECT", help="Use this effect and no other (repeatable)."),
         click.option("--without", multiple=True, metavar="EFFECT", help="Leave this effect out (repeatable)."),
         click.option(
@@ -71,6 +72,13 @@ def analysis_options(command: F) -> F:
     for option in reversed(options):
         wrapped = option(wrapped)
     return wrapped  # type: ignore[no-any-return]  # click's decorators keep the function
+
+
+def draw_option(command: F) -> F:
+    """Add --draw; the command hands it on in its `Wishes`."""
+    return click.option(
+        "--draw", "picture", type=click.Path(path_type=Path), help="Draw the result to this .svg, .pdf or .png."
+    )(command)
 
 
 def _gathering(command: Callable[..., Any]) -> Callable[..., Any]:
@@ -116,6 +124,11 @@ def run_analysis(analysis: Analysis, system: Path | Callable[[Any], SystemFile] 
 
     if wishes.out is not None:
         check_target(wishes.out, overwrite=wishes.overwrite)
+    if wishes.picture is not None:
+        from clockfall.app.pictures import draw_to  # matplotlib, 0.4 s
+        from clockfall.figures.saving import check_picture
+
+        check_picture(wishes.picture, overwrite=wishes.overwrite)
     host = load_host(strict=wishes.strict)
     if system is None:
         file = demo_system(host.cards)
@@ -127,6 +140,12 @@ def run_analysis(analysis: Analysis, system: Path | Callable[[Any], SystemFile] 
     if wishes.out is not None:
         result = Result(analysis.name, wishes.choices, file.text, outcome, current_versions())
         write_result(wishes.out, result, overwrite=wishes.overwrite)
+    if wishes.picture is not None:
+        draw_to(wishes.picture, analysis.name, outcome, file.system, host, wishes.choices, overwrite=wishes.overwrite)
     print_outcome(analysis, outcome, as_json=wishes.as_json, quiet=wishes.quiet, demo=system is None)
-    if wishes.out is not None and not (wishes.as_json or wishes.quiet):
+    if wishes.as_json or wishes.quiet:
+        return
+    if wishes.out is not None:
         click.echo(f"\nWritten to {wishes.out}; read it with: clockfall show {wishes.out}")
+    if wishes.picture is not None:
+        click.echo(f"\nDrawn to {wishes.picture}")

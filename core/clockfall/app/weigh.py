@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -12,7 +13,7 @@ from clockfall.analysis.outcome import Finding, Outcome
 from clockfall.analysis.weigh import weigh
 from clockfall.app.analyses import Analysis, Block
 from clockfall.app.numbers import as_json, as_text, finite
-from clockfall.app.options import Wishes, analysis_options, run_analysis
+from clockfall.app.options import Wishes, analysis_options, draw_option, run_analysis
 from clockfall.files.shown import aligned
 
 _MASSES = ("mass_1", "mass_2", "total_mass", "mass_ratio", "sin_inclination")
@@ -122,12 +123,13 @@ ANALYSIS = Analysis("weigh", weigh, report, blocks, headline)
 
 @click.command("weigh")
 @click.argument("system", required=False, type=click.Path(path_type=Path))
+@draw_option
 @analysis_options
-def command(system: Path | None, wishes: Wishes) -> None:
+def command(system: Path | None, picture: Path | None, wishes: Wishes) -> None:
     """Both masses of SYSTEM from measured parameters.
 
     Those named by --use weigh the bodies, two or more; without it the two that leave the smallest area of the plane of
     masses, the orbital decay apart. Masses given in the file are not used. Every other measured parameter is compared
     with what the masses predict for it, and all are fitted together.
     """
-    run_analysis(ANALYSIS, system, wishes)
+    run_analysis(ANALYSIS, system, replace(wishes, picture=picture))

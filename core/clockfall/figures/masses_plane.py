@@ -19,6 +19,7 @@ if TYPE_CHECKING:
 
 _PANEL: Final = 89.0  # mm, the height of a panel with its axis and title
 _LEGEND_ROW: Final = 4.2  # mm
+_DOTS: Final = 300  # draws of the posterior that are shown
 _JOINT: Final = -2.0 * math.log1p(-0.682689)
 """chi^2 of two degrees of freedom below which 68.27 % lie, 2.296."""
 
@@ -31,19 +32,33 @@ class WeighedMasses:
     mass_2: Drawn
 
     def ellipse(self) -> FloatArray | None:
-        """Return the outline that holds 68.3 % of normally distributed draws, shape (2, points) [Msun]; None without.
+        """Return the ellipse that holds 68.3 % of the draws, shape (2, points) [Msun]; None where they form none.
 
         The covariance is that of the draws.
         """
-        both = np.stack([self.mass_1.draws, self.mass_2.draws])
-        both = both[:, np.isfinite(both).all(axis=0)]
-        if both.shape[1] < 3:
+        both = self.kept()
+        if both.shape[1] < 3 or not self._is_an_ellipse(both):
             return None
         sizes, axes = np.linalg.eigh(np.cov(both))
         angle = np.linspace(0.0, 2.0 * np.pi, 181)
         circle = np.stack([np.cos(angle), np.sin(angle)])
         outline = axes @ (np.sqrt(_JOINT * np.maximum(sizes, 0.0))[:, None] * circle)
         return np.asarray(outline + np.array([[self.mass_1.central], [self.mass_2.central]]))
+
+    def kept(self) -> FloatArray:
+        """Return the draws that have a meaning, shape (2, kept) [Msun]."""
+        both = np.stack([self.mass_1.draws, self.mass_2.draws])
+        return both[:, np.isfinite(both).all(axis=0)]
+
+    def _is_an_ellipse(self, both: FloatArray) -> bool:
+        """Whether the ellipse of the covariance round the central masses holds the share of draws that it should."""
+        covariance = np.cov(both)
+        if np.linalg.matrix_rank(covariance, tol=0.0, hermitian=True) < 2:
+            return False
+        away = both - np.array([[self.mass_1.central], [self.mass_2.central]])
+        sizes, axes = np.linalg.eigh(covariance)
+        inside = np.sum((axes.T @ away) ** 2 / np.maximum(sizes, np.finfo(float).tiny)[:, None], axis=0) < _JOINT
+        return abs(float(np.mean(inside)) - 0.683) < 0.05
 
 
 def masses_plane(
@@ -71,7 +86,7 @@ def masses_plane(
     panels = [plane] if close_up is None else [plane, close_up]
     styles = {curve.name: (number + 1, *SERIES[number % len(SERIES)]) for number, curve in enumerate(plane.curves)}
     with look():
-        height = _PANEL + _LEGEND_ROW * (len(plane.curves) + 3) / len(panels)
+        height = _PANEL + _LEGEND_ROW * math.ceil((len(plane.curves) + 3) / len(panels))
         figure = sheet(NARROW if close_up is None else WIDE, height)
         for number, (axes, shown) in enumerate(
             zip(figure.subplots(1, len(panels), squeeze=False)[0], panels, strict=True)
@@ -184,6 +199,7 @@ def _draw_masses(axes: Axes, masses: WeighedMasses) -> None:
     outline = masses.ellipse()
     if outline is not None:
         axes.plot(*outline, color=BLACK, linewidth=0.9, zorder=4.0)
+    axes.plot(*masses.kept()[:, :_DOTS], ".", color=BLACK, markersize=1.2, markeredgewidth=0.0, alpha=0.6, zorder=3.8)
     axes.plot([masses.mass_1.central], [masses.mass_2.central], "P", color=BLACK, markersize=5.0,
               markeredgecolor="white", markeredgewidth=0.5, zorder=5.0)  # fmt: skip
 
@@ -239,6 +255,13 @@ def _distance(own: FloatArray, others: FloatArray) -> FloatArray:
     return nearest
 
 
+def _said_of(masses: WeighedMasses) -> str:
+    if not masses.kept().size:
+        return "masses"
+    shape = "" if masses.ellipse() is None else ", 68.3 % ellipse"
+    return f"masses: best, draws (dots){shape}"
+
+
 def _legend(figure: Figure, plane: Plane, styles: dict[str, Style], masses: WeighedMasses | None, columns: int) -> None:
     from matplotlib.lines import Line2D
     from matplotlib.patches import Patch
@@ -250,7 +273,7 @@ def _legend(figure: Figure, plane: Plane, styles: dict[str, Style], masses: Weig
     handles.append(Patch(color=GREY, alpha=0.28, label="band: 68.3 % interval"))
     if masses is not None:
         handles.append(Line2D([], [], color=BLACK, marker="P", linewidth=0.9, markersize=5.0, markeredgecolor="white",
-                              markeredgewidth=0.5, label="masses, with 68.3 % ellipse"))  # fmt: skip
+                              markeredgewidth=0.5, label=_said_of(masses)))  # fmt: skip
     if _has_edge(plane):
         handles.append(
             Patch(facecolor="none", edgecolor=GREY, hatch="////", linewidth=0.0, label="sin i > 1: no orbit")
