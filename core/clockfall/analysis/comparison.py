@@ -90,8 +90,10 @@ def _inclinations(of: Study) -> Iterator[Said]:
 
 
 def _sigmas(of: Study, difference: FloatArray) -> float:
-    """Return how far a difference is from zero; infinite where exact values differ, 0 where nothing can be said."""
+    """Return how many sigma a difference is from zero; 0 where it is near, or nothing can be said."""
     drawn = Drawn.from_batch(difference, of.sample.possible)
+    if abs(drawn.central) < 2.0 * np.nanstd(drawn.draws):
+        return 0.0  # near enough not to be sorted
     if drawn.interval is None:
         return 0.0
     sigma = tension_of(drawn).central

@@ -1,7 +1,7 @@
 """Uncertainty as a batch: an uncertain system is drawn into one state of shape (1 + draws,).
 
-Element 0 is the central one, every quantity at its median; the rest are draws from a scrambled Sobol sequence
-(Sobol 1967; Owen 1998), so that every analysis runs on the batch unchanged and quantiles come out smoothly.
+Element 0 is the central one, every quantity at its median; the rest are draws from a scrambled Sobol sequence, so that
+every analysis runs on the batch unchanged and quantiles come out smoothly.
 """
 
 from __future__ import annotations
@@ -15,6 +15,7 @@ import numpy as np
 import numpy.typing as npt
 
 from clockfall.analysis.parallax import distances
+from clockfall.analysis.sobol import DIMENSIONS, sobol
 from clockfall.analysis.system import Correlation, System, Uncertain
 from clockfall.binary.epoch import Epoch
 from clockfall.binary.ranges import ANY, BoolArray, FloatArray, Range
@@ -102,9 +103,10 @@ def draw(system: System, cards: tuple[Card, ...], *, draws: int = DEFAULT_DRAWS,
     Raises
     ------
     BadInput
-        `draws` outside 1 ... 2^24, or correlations that contradict each other.
+        Correlations that contradict each other.
     OutOfRange
-        A central value outside its range.
+        `draws` outside 1 ... 2^24, a central value outside its range, or more uncertain quantities than the Sobol
+        sequence has dimensions.
     """
     if not 1 <= draws <= MOST_DRAWS:
         raise OutOfRange("draws", f"1 <= draws <= {MOST_DRAWS}", str(draws))
@@ -118,14 +120,14 @@ def draw(system: System, cards: tuple[Card, ...], *, draws: int = DEFAULT_DRAWS,
 
     def values(path: Path) -> FloatArray:
         array = _drawn(quantities[path], scores.get(path), size)
+        if _range(path, cards).holds_all(array):
+            return array
         inside = _range(path, cards).holds(array)
         if not inside[0]:
             _range(path, cards).check(".".join(path[1:]), array[0])
-        if not inside.all():
-            set_aside[".".join(path[1:])] = int(np.sum(~inside))
-            possible[~inside] = False
-            array = np.where(inside, array, array[0])
-        return array
+        set_aside[".".join(path[1:])] = int(np.sum(~inside))
+        possible[~inside] = False
+        return np.where(inside, array, array[0])
 
     def far(parallax: Uncertain) -> FloatArray:
         found = distances(parallax, scores.get(("fields", "parallax")), system.distance_prior)
@@ -188,7 +190,9 @@ def _range(path: Path, cards: tuple[Card, ...]) -> Range:
 def _drawn(quantity: Uncertain, scores: FloatArray | None, size: int) -> FloatArray:
     """Return the quantity at its median followed by its draws; shape (size,)."""
     array = np.full(size, quantity.value)
-    if scores is not None:
+    if scores is not None and quantity.plus == quantity.minus:
+        array[1:] += scores * quantity.plus
+    elif scores is not None:
         array[1:] += scores * np.where(scores > 0.0, quantity.plus, quantity.minus)
     return array
 
@@ -200,17 +204,17 @@ def _normal_scores(
     if not uncertain:
         return {}
     from scipy.special import ndtri  # 0.3 s, needed here alone
-    from scipy.stats import qmc  # 0.6 s, likewise
 
+    if len(uncertain) > DIMENSIONS:
+        raise OutOfRange("uncertain quantities of a system", f"at most {DIMENSIONS}", str(len(uncertain)))
     # A Sobol sequence is balanced in powers of two; any other number takes the head of the next one.
     power = max(0, (draws - 1).bit_length())
-    uniform = qmc.Sobol(len(uncertain), scramble=True, rng=np.random.default_rng(seed)).random_base2(power)[:draws]
-    # Scrambled points lie in [0, 1); 0 itself would give minus infinity.
-    scores = ndtri(np.maximum(uniform, 2.0**-65))  # (draws, quantities)
+    uniform = sobol(len(uncertain), power, np.random.default_rng(seed))[:, :draws]
+    scores = ndtri(uniform, out=uniform)  # (quantities, draws)
     factor = _correlation_factor(uncertain, correlations)
     if factor is not None:
-        scores = scores @ factor.T
-    return {path: np.ascontiguousarray(scores[:, column]) for column, path in enumerate(uncertain)}
+        scores = factor @ scores
+    return dict(zip(uncertain, scores, strict=True))
 
 
 def _correlation_factor(uncertain: list[Path], correlations: tuple[Correlation, ...]) -> FloatArray | None:

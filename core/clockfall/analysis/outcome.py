@@ -36,7 +36,7 @@ class Drawn:
     def from_batch(cls, values: FloatArray, possible: BoolArray | None = None) -> Drawn:
         """Split an array of shape (1 + draws,) into centre and draws; draws that are not `possible` are set aside."""
         draws = np.array(values[1:], dtype=np.float64)
-        if possible is not None:
+        if possible is not None and not possible.all():
             draws[~possible[1:]] = np.nan
         draws.flags.writeable = False
         return cls(float(values[0]), draws)
@@ -44,11 +44,12 @@ class Drawn:
     @cached_property
     def interval(self) -> tuple[float, float] | None:
         """The 68.3 % interval, between the quantiles 15.87 % and 84.13 % of the draws; None without spread."""
-        kept = self.draws[np.isfinite(self.draws)]
-        if kept.size < 2 or np.ptp(kept) == 0.0:
+        ordered = np.sort(self.draws)  # faster than a partial order, and NaN comes last
+        if ordered.size and not np.isfinite(ordered[[0, -1]]).all():
+            ordered = ordered[np.isfinite(ordered)]
+        if ordered.size < 2 or ordered[0] == ordered[-1]:
             return None
-        low, high = np.quantile(kept, (LOWER_QUANTILE, 1.0 - LOWER_QUANTILE))
-        return float(low), float(high)
+        return _quantile(ordered, LOWER_QUANTILE), _quantile(ordered, 1.0 - LOWER_QUANTILE)
 
     @property
     def uncertainty(self) -> float | None:
@@ -59,6 +60,14 @@ class Drawn:
     def set_aside(self) -> int:
         """How many draws have no meaning."""
         return int(np.sum(~np.isfinite(self.draws)))
+
+
+def _quantile(ordered: FloatArray, share: float) -> float:
+    """Return a quantile of sorted numbers, by straight lines between them: numpy's own default."""
+    below = int(share * (ordered.size - 1))
+    rest = share * (ordered.size - 1) - below
+    low, high = ordered[below], ordered[min(below + 1, ordered.size - 1)]
+    return float(low + rest * (high - low))
 
 
 @dataclass(frozen=True, slots=True)

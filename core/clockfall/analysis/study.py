@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, replace
+from functools import reduce
 from types import MappingProxyType
 
 import numpy as np
@@ -90,9 +91,7 @@ def predictions(applied: Applied, given_apparent: Mapping[str, FloatArray]) -> M
     for name, found in by_name.items():
         unused = [part for part in found if name in given_apparent and part.card.nature == "apparent"]
         parts = [part for part in found if all(part is not other for other in unused)]
-        zero = np.zeros(applied.state.shape)
-        intrinsic = sum((p.values for p in parts if p.card.nature == "intrinsic"), start=zero)
-        apparent = sum((p.values for p in parts if p.card.nature == "apparent"), start=zero)
+        intrinsic, apparent = (_sum(parts, nature, applied.state.shape) for nature in ("intrinsic", "apparent"))
         first = found[0]
         summed[name] = Prediction(
             name,
@@ -100,11 +99,16 @@ def predictions(applied: Applied, given_apparent: Mapping[str, FloatArray]) -> M
             first.shown_in,
             first.meaning,
             intrinsic,
-            given_apparent.get(name, apparent) + zero,
+            np.broadcast_to(given_apparent.get(name, apparent), applied.state.shape),
             tuple(parts),
             tuple(part.card.name for part in unused),
         )
     return MappingProxyType(summed)
+
+
+def _sum(parts: Iterable[Contribution], nature: str, shape: tuple[int, ...]) -> FloatArray:
+    values = [part.values for part in parts if part.card.nature == nature]
+    return reduce(np.add, values) if values else np.broadcast_to(0.0, shape)
 
 
 def applied_to(host: Host, sample: Sample, choices: Choices, state: BinaryState | None = None) -> Applied:

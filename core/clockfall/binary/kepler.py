@@ -195,27 +195,21 @@ def eccentric_anomaly_from_true(
 
 def _angle(what: str, values: ArrayLike) -> FloatArray:
     array = real_array(what, values)
-    _check(ANY, what, array, "rad")
+    ANY.check(what, array, "rad")
     return array
-
-
-def _check(within: Range, what: str, values: FloatArray, unit: str = "") -> None:
-    """Check large arrays quickly: all lie in an interval if the least and the greatest do; a NaN is both."""
-    if values.size and not within.holds([values.min(), values.max()]).all():
-        within.check(what, values, unit)
 
 
 def _eccentricity(eccentricity: ArrayLike, one_minus: ArrayLike | None) -> Eccentricity:
     """Check the eccentricity and keep the form of it that counts."""
     e = real_array("eccentricity", eccentricity)
     if one_minus is None:
-        _check(_ECCENTRICITY, "eccentricity", e)
+        _ECCENTRICITY.check("eccentricity", e)
         return Eccentricity(e, complement=False)
     o = real_array("one_minus_eccentricity", one_minus)
-    _check(_ROUNDED_ECCENTRICITY, "eccentricity", e)
-    _check(_ONE_MINUS_ECCENTRICITY, "one_minus_eccentricity", o)
+    _ROUNDED_ECCENTRICITY.check("eccentricity", e)
+    _ONE_MINUS_ECCENTRICITY.check("one_minus_eccentricity", o)
     o = np.broadcast_to(o, common_shape(eccentricity=e.shape, one_minus_eccentricity=o.shape))
-    _check(_DISAGREEMENT, "eccentricity + one_minus_eccentricity - 1", np.asarray(e - (1.0 - o)))
+    _DISAGREEMENT.check("eccentricity + one_minus_eccentricity - 1", np.asarray(e - (1.0 - o)))
     return Eccentricity(o, complement=True)
 
 

@@ -43,6 +43,11 @@ class Range:
                 inside &= x < self.below
         return inside
 
+    def holds_all(self, values: FloatArray) -> bool:
+        """Whether all `values` are finite and inside: all lie in an interval if the least and the greatest do."""
+        # a NaN is both the least and the greatest
+        return not values.size or bool(self.holds([values.min(), values.max()]).all())
+
     def text(self, name: str = "x", unit: str = "") -> str:
         """Return the range in words, for instance ``0 <= eccentricity < 1``."""
         low = f"{self.above:g} < " if self.above > -math.inf else ""
@@ -55,9 +60,8 @@ class Range:
     def check(self, name: str, values: npt.ArrayLike, unit: str = "") -> None:
         """Raise OutOfRange naming the first element of `values` that is not inside the range."""
         x = np.asarray(values, dtype=np.float64)
-        inside = self.holds(x)
-        if not inside.all():
-            first = tuple(int(i) for i in np.argwhere(~inside)[0])
+        if not self.holds_all(x):
+            first = tuple(int(i) for i in np.argwhere(~self.holds(x))[0])
             where = f" at index {first}" if first else ""
             raise OutOfRange(name, self.text(name, unit), f"{float(x[first])!r}{where}")
 

@@ -7,6 +7,7 @@ import difflib
 import math
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
+from functools import cached_property
 from types import MappingProxyType
 from typing import Any, Final
 
@@ -52,7 +53,7 @@ def _described(unit: str, shown_in: str, meaning: str, group: str, within: Range
 _UNIT_INTERVAL: Final = Range(at_least=0.0, below=1.0)
 
 
-@dataclass(frozen=True, slots=True, init=False, eq=False, repr=False)
+@dataclass(frozen=True, init=False, eq=False, repr=False)
 class BinaryState:
     """A binary, or a batch of binaries, at one instant.
 
@@ -60,6 +61,7 @@ class BinaryState:
     has shape (). Elements hold at `periastron_epoch`; `orbital_period` is anomalistic, from periastron to
     periastron. `eccentricity` is the Damour-Deruelle e_T. `eccentricity` and `one_minus_eccentricity` are
     two ways to say the same: give either, or both where 1 - e is known better than a double near 1 can say.
+    Derived quantities are computed once, when they are asked for, and shared.
 
     Parameters
     ----------
@@ -183,48 +185,48 @@ class BinaryState:
         values = [getattr(self, name) for name in names]
         return None if any(value is None for value in values) else tuple(values)
 
-    @property
+    @cached_property
     def total_mass(self) -> FloatArray | None:
         """M = m_1 + m_2 [Msun]."""
         masses = self._derived("mass_1", "mass_2")
-        return None if masses is None else masses[0] + masses[1]
+        return None if masses is None else _locked(masses[0] + masses[1])
 
-    @property
+    @cached_property
     def symmetric_mass_ratio(self) -> FloatArray | None:
         """Nu = m_1 m_2 / M^2 [1]."""
         masses = self._derived("mass_1", "mass_2")
-        return None if masses is None else masses[0] * masses[1] / (masses[0] + masses[1]) ** 2
+        return None if masses is None else _locked(masses[0] * masses[1] / (masses[0] + masses[1]) ** 2)
 
-    @property
+    @cached_property
     def chirp_mass(self) -> FloatArray | None:
         """nu^(3/5) M [Msun]."""
         masses = self._derived("symmetric_mass_ratio", "total_mass")
-        return None if masses is None else masses[0] ** 0.6 * masses[1]
+        return None if masses is None else _locked(masses[0] ** 0.6 * masses[1])
 
-    @property
+    @cached_property
     def mean_motion(self) -> FloatArray | None:
         """N = 2 pi / P_b [rad/s]."""
-        return None if self.orbital_period is None else 2.0 * math.pi / self.orbital_period
+        return None if self.orbital_period is None else _locked(2.0 * math.pi / self.orbital_period)
 
-    @property
+    @cached_property
     def orbital_velocity(self) -> FloatArray | None:
         """Beta = (T_sun M n)^(1/3) [c]: the speed on a circular orbit of this period."""
         known = self._derived("total_mass", "mean_motion")
-        return None if known is None else np.cbrt(T_SUN * known[0] * known[1])
+        return None if known is None else _locked(np.cbrt(T_SUN * known[0] * known[1]))
 
-    @property
+    @cached_property
     def relative_semi_major_axis(self) -> FloatArray | None:
         """A = (T_sun M / n^2)^(1/3) [ls], Kepler's third law."""
         known = self._derived("total_mass", "mean_motion")
-        return None if known is None else np.cbrt(T_SUN * known[0] / known[1] ** 2)
+        return None if known is None else _locked(np.cbrt(T_SUN * known[0] / known[1] ** 2))
 
-    @property
+    @cached_property
     def one_minus_e_squared(self) -> FloatArray | None:
         """1 - e^2 = (1 - e)(1 + e) [1], without loss near e = 1."""
         known = self._derived("one_minus_eccentricity", "eccentricity")
-        return None if known is None else known[0] * (1.0 + known[1])
+        return None if known is None else _locked(known[0] * (1.0 + known[1]))
 
-    @property
+    @cached_property
     def sin_inclination(self) -> FloatArray | None:
         """The sine of the inclination [1]; from the mass function where x and both masses are known.
 
@@ -237,11 +239,18 @@ class BinaryState:
             "projected_semi_major_axis", "mass_2", "total_mass", "mean_motion", "symmetric_mass_ratio"
         )
         if known is None:
-            return None if self.inclination is None else np.sin(self.inclination)
+            return None if self.inclination is None else _locked(np.sin(self.inclination))
         x, m_2, M, n, nu = known
         beta_2 = np.cbrt(T_SUN * M * n) ** 2
-        s: FloatArray = x * np.cbrt((n * M) ** 2 / T_SUN) / m_2 * (1.0 + (3.0 - nu / 3.0) * beta_2)
-        return s
+        return _locked(x * np.cbrt((n * M) ** 2 / T_SUN) / m_2 * (1.0 + (3.0 - nu / 3.0) * beta_2))
+
+
+def _locked(values: Any) -> FloatArray:
+    """Return a derived quantity such that nobody who shares it can change it; a scalar cannot be changed anyway."""
+    if isinstance(values, np.ndarray):
+        values.flags.writeable = False
+        values = values.view()
+    return values  # type: ignore[no-any-return]  # an array, or a numpy scalar, as whoever derived it made it
 
 
 def _rebuild(fields: dict[str, Any]) -> BinaryState:
@@ -253,7 +262,7 @@ FIELDS: Final[Mapping[str, FieldDescription]] = MappingProxyType(
 )
 """Every state field and what is to be known about it."""
 
-DERIVED: Final = frozenset(name for name, member in vars(BinaryState).items() if isinstance(member, property))
+DERIVED: Final = frozenset(name for name, member in vars(BinaryState).items() if isinstance(member, cached_property))
 """The names of the derived quantities."""
 
 
