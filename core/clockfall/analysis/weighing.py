@@ -50,6 +50,11 @@ def study(host: Host, system: System, choices: Choices | None = None, *, weigh_a
     """
     choices = (choices or Choices()).with_system(system)
     sample = draw(system, host.cards, draws=choices.draws, seed=choices.seed)
+    return study_of(host, system, choices, sample, weigh_anew=weigh_anew)
+
+
+def study_of(host: Host, system: System, choices: Choices, sample: Sample, *, weigh_anew: bool = False) -> Study:
+    """Return the study of a system that is drawn already, the choices being joined with its own; see `study`."""
     if not weigh_anew and has_masses(sample):
         return finished(host, system, choices, sample)
     used = weighing_parameters(host, system, sample, choices)
