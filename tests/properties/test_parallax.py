@@ -9,8 +9,9 @@ import pytest
 from scipy.special import ndtri
 
 from clockfall.analysis.draws import draw
-from clockfall.analysis.parallax import FARTHEST, LIGHT_SECONDS_PER_AU, distances
+from clockfall.analysis.parallax import FARTHEST, distances
 from clockfall.analysis.system import System, Uncertain
+from clockfall.binary.constants import LIGHT_SECONDS_PER_AU
 from clockfall.effects.loading import load_host
 from clockfall.files.faults import BadFile
 from clockfall.files.system_file import parse_system

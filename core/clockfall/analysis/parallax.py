@@ -7,14 +7,13 @@ from typing import Final, Literal
 import numpy as np
 
 from clockfall.analysis.system import Uncertain
-from clockfall.binary.constants import ASTRONOMICAL_UNIT, PARSEC, SPEED_OF_LIGHT
+from clockfall.binary.constants import LIGHT_SECONDS_PER_AU, PARSEC, SPEED_OF_LIGHT
 from clockfall.binary.ranges import FloatArray
 
 Prior = Literal["none", "volume"]
 
 PRIORS: Final[tuple[Prior, ...]] = ("none", "volume")
 
-LIGHT_SECONDS_PER_AU: Final = ASTRONOMICAL_UNIT / SPEED_OF_LIGHT
 FARTHEST: Final = 25e3 * PARSEC / SPEED_OF_LIGHT
 """With the volume prior no distance beyond 25 kpc is considered [ls]; an endless prior could not be normalised."""
 

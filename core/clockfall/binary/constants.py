@@ -37,6 +37,9 @@ SECONDS_PER_YEAR: Final = DAYS_PER_YEAR * SECONDS_PER_DAY
 ASTRONOMICAL_UNIT: Final = 149_597_870_700.0
 """The astronomical unit [m]. Exact by IAU 2012 Resolution B2."""
 
+LIGHT_SECONDS_PER_AU: Final = ASTRONOMICAL_UNIT / SPEED_OF_LIGHT
+"""The astronomical unit [ls], 499.004783836."""
+
 PARSEC: Final = ASTRONOMICAL_UNIT * 648_000.0 / math.pi
 """The parsec [m]. Exact by IAU 2015 Resolution B2 (note 4)."""
 

@@ -17,6 +17,22 @@ EQUATORIAL_TO_GALACTIC: Final = (
 (equation number from memory)."""
 
 
+def equatorial_direction(
+    right_ascension: FloatArray, declination: FloatArray
+) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Return the components of the unit vector along the three ICRS axes [1].
+
+    Parameters
+    ----------
+    right_ascension, declination : array, broadcast with each other [rad]
+        ICRS.
+    """
+    x = np.cos(declination) * np.cos(right_ascension)
+    y = np.cos(declination) * np.sin(right_ascension)
+    z = np.sin(declination)
+    return x, y, z
+
+
 def galactic_direction(
     right_ascension: FloatArray, declination: FloatArray
 ) -> tuple[FloatArray, FloatArray, FloatArray]:
@@ -27,8 +43,6 @@ def galactic_direction(
     right_ascension, declination : array, any shape [rad]
         ICRS.
     """
-    x = np.cos(declination) * np.cos(right_ascension)
-    y = np.cos(declination) * np.sin(right_ascension)
-    z = np.sin(declination)
+    x, y, z = equatorial_direction(right_ascension, declination)
     towards, along, north = (a * x + b * y + c * z for a, b, c in EQUATORIAL_TO_GALACTIC)
     return towards, along, north
