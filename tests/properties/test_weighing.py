@@ -182,3 +182,21 @@ def test_exact_parameters_are_solved() -> None:
     assert central(outcome, "mass_1") == pytest.approx(M_1, rel=1e-9, abs=0.0)
     with pytest.raises(BadInput, match="need an uncertainty"):
         weigh(HOST, system, Choices(use=(ADVANCE, GAMMA, RANGE)))
+
+
+def test_a_value_that_no_masses_give() -> None:
+    """A shape above 1 belongs to no orbit: the nearest masses are taken, and how far off they are is said."""
+    system = synthetic(**{RANGE: 1e-2, SHAPE: 1e-2})
+    # sin i is at most 1: a shape of 1.02 +/- 0.01 is 2 sigma off
+    system = replace(system, measured={**system.measured, SHAPE: Uncertain(1.02, 0.01, 0.01)})
+    outcome = weigh(HOST, system, FAST)
+    assert any(
+        "no masses give the two measured values; the nearest are 2.0 sigma off" in s.text for s in outcome.cautions
+    )
+
+
+def test_a_decay_that_weighed_is_no_test() -> None:
+    """Where the decay weighed the bodies there is no ratio of measured to predicted, and it is said why."""
+    outcome = decay(HOST, synthetic(**ALL), replace(FAST, use=(ADVANCE, DECAY)))
+    assert outcome.get(DECAY, "ratio") is None
+    assert any("is no test of theory" in said.text for said in outcome.cautions)

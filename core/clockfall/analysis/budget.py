@@ -57,6 +57,8 @@ def budget(of: Study, rate: str) -> list[Finding]:
     if rate not in of.sample.measured:
         return [*parts, *totals]
     measured = total("measured", of.sample.measured[rate], "as measured")
+    if rate in of.used:
+        return [*parts, *totals, measured]  # it weighed the bodies, so it agrees whatever the theory
     compared = comparison(of, prediction)
     renamed = {"observed": "intrinsic_observed"}
     kept = [
@@ -114,6 +116,8 @@ def _given_apparent(of: Study, prediction: Prediction) -> Finding:
 def _unexplained(of: Study) -> list[Said]:
     """Say what a reader of the budget should know about its ground."""
     said = []
+    if DECAY in of.used:
+        said.append(Said("", "the decay itself weighed the bodies, so it is no test of theory and has no ratio"))
     if not has_theory(of.predicted.get(DECAY)):
         said.append(Said("", "no active effect contributes to the orbit's own decay, so nothing is predicted"))
     if DECAY in of.sample.measured and DECAY not in of.sample.apparent:

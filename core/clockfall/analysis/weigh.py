@@ -84,6 +84,9 @@ def _modes(found: Posterior) -> Iterator[Said]:
         shares = ", ".join(f"{share:.1%}" for share in found.mode_weights)
         yield Said("", f"weighing: {found.modes} separate pairs of masses fit, with the probabilities {shares}; the "
                        "intervals reach over all of them")  # fmt: skip
+    if not found.degrees_of_freedom and found.chi_squared > 0.01:
+        yield Said("", "weighing: no masses give the two measured values; the nearest are "
+                       f"{np.sqrt(found.chi_squared):.1f} sigma off")  # fmt: skip
     if not found.converged:
         yield Said("", "weighing: the grid of the posterior did not converge to 0.2 % of the error bar")
 
