@@ -11,17 +11,11 @@ import pytest
 from scipy.interpolate import CubicSpline
 from scipy.special import ndtr, ndtri
 
+from clockfall.analysis.cells import QUANTILES
 from clockfall.analysis.draws import Sample, draw
-from clockfall.analysis.posterior import (
-    QUANTILES,
-    Likelihood,
-    NoOverlap,
-    Posterior,
-    integrate,
-    likelihood_of,
-    posterior,
-    theory_of,
-)
+from clockfall.analysis.likelihood import Likelihood, likelihood_of, theory_of
+from clockfall.analysis.modes import NoOverlap
+from clockfall.analysis.posterior import Posterior, integrate, posterior
 from clockfall.analysis.study import Choices
 from clockfall.analysis.system import Correlation, System, Uncertain
 from clockfall.binary.ranges import FloatArray
