@@ -8,8 +8,10 @@ import numpy as np
 
 from clockfall.analysis.comparison import against_given, comparison
 from clockfall.analysis.draws import Sample, draw
+from clockfall.analysis.likelihood import theory_of
+from clockfall.analysis.modes import NoOverlap
 from clockfall.analysis.outcome import Drawn, Finding, Outcome, Said
-from clockfall.analysis.posterior import NoOverlap, Posterior, theory_of
+from clockfall.analysis.posterior import Posterior
 from clockfall.analysis.study import Choices, Study
 from clockfall.analysis.system import System
 from clockfall.analysis.weighing import (

@@ -11,9 +11,10 @@ from typing import Final
 import numpy as np
 
 from clockfall.analysis.draws import Sample, draw
+from clockfall.analysis.likelihood import theory_of
 from clockfall.analysis.masses import HEAVIEST, LIGHTEST, Misfit, mass_grid, newton_masses, search_masses
 from clockfall.analysis.outcome import Said
-from clockfall.analysis.posterior import Posterior, posterior, theory_of
+from clockfall.analysis.posterior import Posterior, posterior
 from clockfall.analysis.study import Choices, Prediction, Study, applied_to, predicted_at, predictions
 from clockfall.analysis.system import System, Uncertain
 from clockfall.binary.ranges import FloatArray
