@@ -2,11 +2,15 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 import numpy as np
 
 from clockfall.binary.constants import T_SUN
+from clockfall.binary.orbit import Orbit
+from clockfall.binary.ranges import FloatArray
 from clockfall.binary.state import BinaryState
-from clockfall.effects import Card, Parameter, Predicted, hook
+from clockfall.effects import Card, Delay, Parameter, Predicted, hook
 
 
 @hook
@@ -16,6 +20,7 @@ def describe() -> Card:
         name="shapiro-delay",
         summary="Signals passing the companion arrive late; most where the pulsar stands behind it.",
         formula=(
+            "delay = -2 r ln{1 - e cos E - s [sin omega (cos E - e) + sqrt(1 - e^2) cos omega sin E]};  "
             "r = T_sun m_2,  s = sin i = x n^(2/3) T_sun^(-1/3) M^(2/3)/m_2 [1 + (3 - nu/3) beta^2];  "
             "ratio = s/(1 + abs(cos i)),  amplitude = r ratio^3"
         ),
@@ -52,6 +57,7 @@ def describe() -> Card:
                 defined_where="sin i <= 1",
             ),
         ),
+        delay="what the companion's gravity adds to the light's way; none where the inclination is not known",
     )
 
 
@@ -74,3 +80,19 @@ def predicted_parameters(state: BinaryState) -> Predicted:
             "orthometric_amplitude": r * ratio**3,
         }
     )
+
+
+@hook
+def delay(orbit: Orbit, parameters: Mapping[str, FloatArray]) -> Delay:
+    """Return the Shapiro delay [s]; shape batch + (times,)."""
+    if "shapiro_shape" not in parameters:
+        return Delay(np.zeros(orbit.shape))
+    r, s = parameters["shapiro_range"], parameters["shapiro_shape"]
+    along, across = orbit.cos_E - orbit.eccentricity, orbit.root * orbit.sin_E
+    behind = orbit.sin_omega * along + orbit.cos_omega * across  # towards the far side, over the semi-major axis
+    # it all but vanishes where the pulsar stands behind the companion, edge-on; the logarithm takes r to microseconds
+    Lambda = orbit.one_minus_e_cos_E - s * behind
+    by_E = orbit.eccentricity * orbit.sin_E - s * (
+        orbit.root * orbit.cos_omega * orbit.cos_E - orbit.sin_omega * orbit.sin_E
+    )
+    return Delay(-2.0 * r * np.log(Lambda), -2.0 * r * by_E / Lambda * orbit.eccentric_rate)

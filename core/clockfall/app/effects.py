@@ -91,6 +91,7 @@ def _card_blocks(host: Host, effect: Effect) -> Iterator[Block]:
         ("valid", card.valid),
         ("needs", ", ".join(card.needs)),
         ("replaces", ", ".join(card.replaces) or "nothing"),
+        *((("delay", card.delay),) if card.delay else ()),
         ("installed by", f"{effect.distribution} {effect.version}"),
         ("hooks", ", ".join(host.hooks_of(effect))),
     ]

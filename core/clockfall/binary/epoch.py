@@ -335,12 +335,12 @@ def orbits_elapsed(start: Epoch, end: Epoch, period: ArrayLike) -> OrbitCount:
     _PERIOD.check("period", P, "s")
     common_shape(start=start.shape, end=end.shape, period=P.shape)
     days, days_low = _days_between(start, end)
-    seconds, seconds_low = _two_product(days, SECONDS_PER_DAY)
+    seconds, seconds_low = two_product(days, SECONDS_PER_DAY)
     seconds_low += days_low * SECONDS_PER_DAY
     with np.errstate(over="ignore"):
         whole = np.rint(seconds / P)
     _WHOLE.check("orbits elapsed", whole, "orbits")
-    product, product_low = _two_product(whole, P)
+    product, product_low = two_product(whole, P)
     # Both parts of the difference are exact or nearly so, as the product is the multiple of P nearest to the time.
     rest = (seconds - product) + (seconds_low - product_low)
     return OrbitCount(whole.astype(np.int64), rest / P)
@@ -386,12 +386,12 @@ def _days_between(start: Epoch, end: Epoch) -> tuple[FloatArray, FloatArray]:
     """Return the days from start to end as the sum of two doubles, right to 1e-32 of the first."""
     common_shape(start=start.shape, end=end.shape)
     whole = np.asarray(end.day - start.day, dtype=np.float64)
-    fraction, fraction_low = _two_sum(end.fraction, -start.fraction)
-    days, days_low = _two_sum(whole, fraction)
+    fraction, fraction_low = two_sum(end.fraction, -start.fraction)
+    days, days_low = two_sum(whole, fraction)
     return days, days_low + fraction_low
 
 
-def _two_sum(a: FloatArray, b: FloatArray) -> tuple[FloatArray, FloatArray]:
+def two_sum(a: FloatArray, b: FloatArray) -> tuple[FloatArray, FloatArray]:
     """Return a + b, rounded, and its exact error.
 
     D. E. Knuth, The Art of Computer Programming, vol. 2, section 4.2.2.
@@ -401,7 +401,7 @@ def _two_sum(a: FloatArray, b: FloatArray) -> tuple[FloatArray, FloatArray]:
     return total, (a - (total - part)) + (b - part)
 
 
-def _two_product(a: FloatArray, b: FloatArray | float) -> tuple[FloatArray, FloatArray]:
+def two_product(a: FloatArray, b: FloatArray | float) -> tuple[FloatArray, FloatArray]:
     """Return a b, rounded, and its exact error: T. J. Dekker, Numer. Math. 18, 224 (1971)."""
     product = a * b
     a_high, a_low = _halves(a)

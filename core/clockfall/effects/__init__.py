@@ -6,7 +6,7 @@ This is all that an effect needs to import besides `clockfall.binary`:
 """
 
 from clockfall.effects.card import APPARENT, INTRINSIC, Card, OwnChoice, OwnParameter, Parameter, Rate
-from clockfall.effects.contributions import Caution, ClosedFormTrack, Predicted, Rates, Settings
+from clockfall.effects.contributions import Caution, ClosedFormTrack, Delay, Predicted, Rates, Settings
 from clockfall.effects.hooks import hook
 
 __all__ = [
@@ -15,6 +15,7 @@ __all__ = [
     "Card",
     "Caution",
     "ClosedFormTrack",
+    "Delay",
     "OwnChoice",
     "OwnParameter",
     "Parameter",

@@ -143,6 +143,8 @@ class Card:
         Its settings that are words.
     replaces : tuple of str
         Effects that step back while this one is active.
+    delay : str
+        What its delay is, in one line; "" for an effect that has none.
 
     Raises
     ------
@@ -162,6 +164,7 @@ class Card:
     parameters: tuple[OwnParameter, ...] = ()
     choices: tuple[OwnChoice, ...] = ()
     replaces: tuple[str, ...] = ()
+    delay: str = ""
 
     def __post_init__(self) -> None:
         self._require(_EFFECT_NAME.fullmatch(self.name), "name", "lower-case words joined by hyphens", self.name)

@@ -3,15 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from contextlib import suppress
 from dataclasses import dataclass
 from typing import TypeVar
 
 import numpy as np
 
+from clockfall.binary.orbit import Orbit
 from clockfall.binary.ranges import FloatArray
 from clockfall.binary.state import FIELDS, BinaryState
 from clockfall.effects.card import Card, Parameter
-from clockfall.effects.contributions import Caution, ClosedFormTrack, Predicted, Rates
+from clockfall.effects.contributions import Caution, ClosedFormTrack, Delay, Predicted, Rates
 
 T = TypeVar("T")
 
@@ -108,6 +110,21 @@ def parameters(card: Card, state: BinaryState, returned: object) -> Iterator[Con
         array = _array(name, values, state.shape, nan_allowed=bool(parameter.defined_where))
         shown_in = parameter.shown_in or parameter.unit
         yield Contribution(card, name, parameter.unit, shown_in, parameter.meaning, array, parameter.defined_where)
+
+
+def delay(card: Card, orbit: Orbit, returned: object) -> Iterator[tuple[Card, Delay]]:
+    """Check what `delay` returned; yield it with its card, both arrays of the orbit's shape."""
+    found = _expect(returned, Delay, "delay")
+    arrays = []
+    for name in ("seconds", "rate"):
+        values = getattr(found, name)
+        if isinstance(values, np.ndarray | np.float64) and values.shape != orbit.shape:
+            with suppress(ValueError):  # a delay may be the same at all times; any other shape is told below
+                values = np.broadcast_to(values, orbit.shape)
+        arrays.append(None if values is None and name == "rate" else _array(name, values, orbit.shape))
+    seconds, rate = arrays
+    assert seconds is not None
+    yield card, Delay(seconds, rate)
 
 
 def cautions(card: Card, state: BinaryState, returned: object) -> Iterator[tuple[str, Caution]]:

@@ -81,6 +81,23 @@ class Predicted:
 
 
 @dataclass(frozen=True, slots=True)
+class Delay:
+    """What an effect adds to the time from emission to arrival.
+
+    Attributes
+    ----------
+    seconds : array, shape batch + (times,) [s]
+        At each emission time.
+    rate : array, shape batch + (times,), or None [1]
+        Its derivative by emission time, all or most of it. It makes the inversion from arrival to emission converge
+        faster and is never needed; leave it out where the delay changes by less than 1e-6 s in a second.
+    """
+
+    seconds: FloatArray
+    rate: FloatArray | None = None
+
+
+@dataclass(frozen=True, slots=True)
 class Caution:
     """A statement that a number is used outside, or near the edge of, its range of validity.
 

@@ -8,14 +8,16 @@ finiteness, and an exception in a hook is reported with the effect's name.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from typing import Final
 
 import pluggy
 
+from clockfall.binary.orbit import Orbit
 from clockfall.binary.ranges import FloatArray
 from clockfall.binary.state import BinaryState
 from clockfall.effects.card import Card
-from clockfall.effects.contributions import Caution, ClosedFormTrack, Predicted, Rates, Settings
+from clockfall.effects.contributions import Caution, ClosedFormTrack, Delay, Predicted, Rates, Settings
 
 PROJECT: Final = "clockfall"
 
@@ -54,6 +56,25 @@ def predicted_parameters(state: BinaryState, settings: Settings) -> Predicted:
 
     Called like `secular_rates`. A parameter whose own `needs` are not known is left out of what is returned.
     A parameter may be predicted by one active effect alone.
+    """
+    raise NotImplementedError
+
+
+@_specification
+def delay(orbit: Orbit, parameters: Mapping[str, FloatArray], settings: Settings) -> Delay:
+    """Return what the effect adds to the time from emission to arrival [s].
+
+    Called with the orbit carried to many emission times, several times over as arrival is inverted to emission; so it
+    must depend on nothing but its arguments. Delays add: one that changes another effect's is the difference.
+
+    Parameters
+    ----------
+    orbit : Orbit, shape batch + (times,)
+        `orbit.state` has shape batch + (1,), so that it broadcasts with the times.
+    parameters : mapping of name to array, shape batch + (1,)
+        The parameters that this effect predicts; what was measured or is being fitted may stand in for them.
+    settings : mapping of name to array, shape batch + (1,)
+        The effect's own parameters.
     """
     raise NotImplementedError
 

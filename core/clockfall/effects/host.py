@@ -12,12 +12,13 @@ from typing import Any, TypeVar
 import numpy as np
 import pluggy
 
+from clockfall.binary.orbit import Orbit
 from clockfall.binary.ranges import FloatArray
 from clockfall.binary.state import BinaryState
 from clockfall.effects import checks
 from clockfall.effects.card import Card, OwnParameter
 from clockfall.effects.checks import BadReturn, Contribution
-from clockfall.effects.contributions import Caution, ClosedFormTrack, Settings
+from clockfall.effects.contributions import Caution, ClosedFormTrack, Delay, Settings
 from clockfall.errors import BadInput, ClockfallError
 
 T = TypeVar("T")
@@ -220,6 +221,45 @@ class Applied:
         check = partial(checks.track, times=times)
         return next(self._collect("closed_form_track", check, times=times), None)
 
+    def delays(
+        self, orbit: Orbit, parameters: Mapping[str, Mapping[str, FloatArray]]
+    ) -> tuple[tuple[Card, Delay], ...]:
+        """Return every active effect's delay, with its card, in the order of their names.
+
+        Parameters
+        ----------
+        orbit : Orbit, shape batch + (times,)
+            The orbit of this state, carried to emission times.
+        parameters : mapping of effect name to mapping of parameter to array, shape batch + (1,)
+            What each effect predicts, or what stands in for it; see `delay_parameters`.
+        """
+
+        def arguments(effect: Effect, own: Settings) -> dict[str, object]:
+            along = Settings({name: value[..., None] for name, value in own.items()}, own.choices)
+            return {"orbit": orbit, "parameters": parameters.get(effect.name, {}), "settings": along}
+
+        def check(card: Card, state: BinaryState, returned: object) -> Iterator[tuple[Card, Delay]]:
+            del state  # the orbit's own is checked for changes
+            return checks.delay(card, orbit, returned)
+
+        return tuple(self._collect("delay", check, arguments))
+
+    def delay_parameters(
+        self, instead: Mapping[str, FloatArray] | None = None
+    ) -> Mapping[str, Mapping[str, FloatArray]]:
+        """Return what each effect predicts, by effect and name, for its own delay; shape batch + (1,).
+
+        Parameters
+        ----------
+        instead : mapping of parameter to array, shape batch
+            Values that stand in for predicted ones.
+        """
+        found: dict[str, dict[str, FloatArray]] = {}
+        for contribution in self.predicted_parameters():
+            values = (instead or {}).get(contribution.name, contribution.values)
+            found.setdefault(contribution.card.name, {})[contribution.name] = np.asarray(values)[..., None]
+        return found
+
     def others_changing_the_orbit(self, name: str) -> tuple[str, ...]:
         """Return the active intrinsic effects besides `name` that change the period or the eccentricity."""
         shape_of_orbit = {"orbital_period", "eccentricity"}
@@ -231,14 +271,20 @@ class Applied:
             and any(rate.of in shape_of_orbit for rate in effect.card.rates)
         )
 
-    def _collect(self, hook: str, checked: Callable[[Card, BinaryState, Any], Iterator[T]], **more: Any) -> Iterator[T]:
+    def _collect(
+        self,
+        hook: str,
+        checked: Callable[[Card, BinaryState, Any], Iterator[T]],
+        arguments_of: Callable[[Effect, Settings], dict[str, Any]] | None = None,
+        **more: Any,
+    ) -> Iterator[T]:
         """Call `hook` of each active effect in turn; yield what it contributed, checked."""
         implementations = {id(i.plugin): i for i in getattr(self._manager.hook, hook).get_hookimpls()}
         for effect, own in self._active:
             implementation = implementations.get(id(effect.plugin))
             if implementation is None:
                 continue
-            arguments = {"state": self.state, "settings": own, **more}
+            arguments = arguments_of(effect, own) if arguments_of else {"state": self.state, "settings": own, **more}
             before = _field_identities(self.state)
             try:
                 with np.errstate(divide="raise", over="raise", invalid="raise"):

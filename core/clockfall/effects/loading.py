@@ -118,6 +118,9 @@ def _load(manager: pluggy.PluginManager, candidate: Candidate) -> Effect:
     if card.name != candidate.name:
         manager.unregister(plugin)
         raise fault("describe", f"its card is named {card.name!r}, its entry point {candidate.name!r}; make them equal")
+    if bool(card.delay) != any(caller.name == "delay" for caller in manager.get_hookcallers(plugin) or ()):
+        manager.unregister(plugin)
+        raise fault("describe", "its card describes a delay if and only if it has the hook of that name")
     return Effect(card, candidate.distribution, candidate.version, plugin)
 
 
