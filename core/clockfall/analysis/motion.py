@@ -3,18 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from typing import Final, Literal
+from typing import Final
 
 import numpy as np
 
 from clockfall.analysis.draws import Sample
-from clockfall.analysis.study import Choices, Prediction, predicted_at
+from clockfall.analysis.study import Choices, Prediction, RatesFrom, predicted_at
 from clockfall.binary.orbit import SecularMotion
 from clockfall.binary.ranges import FloatArray
 from clockfall.binary.state import BinaryState
 from clockfall.effects.host import Host
-
-RatesFrom = Literal["predicted", "measured"]
 
 _SHARE: Final = 1e-3  # of the time in which an element changes by itself: the step of the second rates
 _LONG: Final = 1e9  # s, the step where nothing changes

@@ -10,6 +10,7 @@ from types import MappingProxyType
 from typing import Final
 
 import numpy as np
+import numpy.typing as npt
 
 from clockfall.binary.ranges import BoolArray, FloatArray
 
@@ -114,6 +115,34 @@ class Finding:
 
 
 @dataclass(frozen=True, slots=True)
+class Column:
+    """One column of a table that an analysis found, such as a delay at many times.
+
+    Attributes
+    ----------
+    name : str
+        Fit for a file.
+    values : array, shape (rows,)
+        float64 in `unit`, or int64.
+    unit, shown_in : str
+        Inside clockfall, and for people.
+    meaning : str
+        One line.
+    effect, nature, sources :
+        As of a `Finding`.
+    """
+
+    name: str
+    values: FloatArray | npt.NDArray[np.int64]
+    unit: str
+    shown_in: str
+    meaning: str
+    effect: str = ""
+    nature: str = ""
+    sources: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
 class UsedEffect:
     """An effect that took part: who, from where, and with which own parameters (as text)."""
 
@@ -145,6 +174,8 @@ class Outcome:
         The effects that took part; those that did not, and why; those that broke, and how; statements on validity.
     draws, seed : int
         Of the sample.
+    columns : tuple of Column
+        A table, all columns of one length; () for none.
     """
 
     findings: tuple[Finding, ...]
@@ -155,6 +186,7 @@ class Outcome:
     cautions: tuple[Said, ...]
     draws: int
     seed: int
+    columns: tuple[Column, ...] = ()
     _index: Mapping[tuple[str, str], Finding] = field(init=False, repr=False, compare=False)
 
     def __post_init__(self) -> None:
@@ -171,6 +203,10 @@ class Outcome:
         except KeyError:
             known = ", ".join(f"{quantity}/{role}" for quantity, role in self._index)
             raise KeyError(f"no finding {key[0]}/{key[1]}; there are {known}") from None
+
+    def column(self, name: str) -> Column:
+        """Return a column of the table; KeyError where there is none of that name."""
+        return next(column for column in self.columns if column.name == name)
 
     def contributions(self, quantity: str) -> tuple[Finding, ...]:
         """Return the effects' contributions to `quantity`."""

@@ -7,17 +7,22 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, replace
 from functools import reduce
 from types import MappingProxyType
+from typing import Literal
 
 import numpy as np
 
 from clockfall.analysis.draws import DEFAULT_DRAWS, DEFAULT_SEED, Sample
-from clockfall.analysis.outcome import Drawn, Finding, Outcome, Said, UsedEffect
+from clockfall.analysis.outcome import Column, Drawn, Finding, Outcome, Said, UsedEffect
 from clockfall.analysis.system import System
+from clockfall.binary.epoch import Epoch
 from clockfall.binary.ranges import FloatArray
 from clockfall.binary.state import BinaryState
 from clockfall.effects.checks import Contribution
 from clockfall.effects.contributions import Settings
 from clockfall.effects.host import Applied, Host
+
+By = Literal["arrival", "emission"]
+RatesFrom = Literal["predicted", "measured"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -34,6 +39,12 @@ class Choices:
         The measured parameters that weigh the two bodies; empty for the default pair.
     solve_for, limit : str
         The inverse questions put to the decay: a field, and an own parameter ``<effect>.<parameter>``; "" for none.
+    times : Epoch or None, shape (times,)
+        At which delays are wanted; None for `phases` of one orbit, evenly spaced in the mean anomaly.
+    by : "arrival" or "emission"
+        Which of the two `times` are.
+    rates : "predicted" or "measured"
+        Whether the orbit runs by the effects' rates, or by what was measured where it was.
     """
 
     draws: int = DEFAULT_DRAWS
@@ -43,6 +54,10 @@ class Choices:
     use: tuple[str, ...] = ()
     solve_for: str = ""
     limit: str = ""
+    times: Epoch | None = None
+    phases: int = 24
+    by: By = "arrival"
+    rates: RatesFrom = "predicted"
 
     def with_system(self, system: System) -> Choices:
         """Return these choices joined with those of the system file."""
@@ -166,7 +181,13 @@ class Study:
         card = contribution.card
         return replace(plain, effect=card.name, nature=card.nature, sources=card.sources)
 
-    def outcome(self, findings: Iterable[Finding], facts: Mapping[str, str], cautions: Iterable[Said] = ()) -> Outcome:
+    def outcome(
+        self,
+        findings: Iterable[Finding],
+        facts: Mapping[str, str],
+        cautions: Iterable[Said] = (),
+        columns: tuple[Column, ...] = (),
+    ) -> Outcome:
         """Close the study: findings with all that is to be said beside them."""
         applied, findings = self.applied, tuple(findings)
         stood_for = {said.effect for said in self._set_by_file()} - {finding.effect for finding in findings}
@@ -185,6 +206,7 @@ class Study:
             cautions=(*self.cautions, *_set_aside(self), *_of_the_distance(self.system), *cautions, *by_effects),
             draws=self.sample.draws,
             seed=self.sample.seed,
+            columns=columns,
         )
 
     def _set_by_file(self) -> Iterable[Said]:

@@ -9,10 +9,11 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
-from typing import Final, Literal
+from typing import Final
 
 import numpy as np
 
+from clockfall.analysis.study import By
 from clockfall.binary.epoch import Epoch
 from clockfall.binary.orbit import Orbit, SecularMotion
 from clockfall.binary.ranges import FloatArray
@@ -20,8 +21,6 @@ from clockfall.effects.card import Card
 from clockfall.effects.contributions import Delay
 from clockfall.effects.host import Applied
 from clockfall.errors import ClockfallError
-
-By = Literal["arrival", "emission"]
 
 BLOCK: Final = 16_384
 """Times worked on at once for one binary: they stay in the cache."""

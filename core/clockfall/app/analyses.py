@@ -16,7 +16,7 @@ from clockfall.errors import BadInput
 from clockfall.files.results import Result
 from clockfall.files.system_file import parse_system
 
-NAMES: Final = ("decay", "rates", "weigh", "inspiral")
+NAMES: Final = ("decay", "rates", "weigh", "inspiral", "delays")
 
 
 @dataclass(frozen=True, slots=True)

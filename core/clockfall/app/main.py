@@ -15,7 +15,8 @@ from clockfall.errors import BadInput, ClockfallError
 COMMANDS: Final = {
     "decay": ("clockfall.app.decay", "The orbital decay, taken apart by effect and compared with its measurement."),
     "rates": ("clockfall.app.rates", "Every secular rate and predicted parameter, by effect."),
-    "weigh": ("clockfall.app.weigh", "Both masses from two measured parameters, and a test of the others."),
+    "weigh": ("clockfall.app.weigh", "Both masses from measured parameters, and a test of the others."),
+    "delays": ("clockfall.app.delays", "What each effect adds to the arrival times."),
     "inspiral": ("clockfall.app.inspiral", "Time to merger from masses, period and eccentricity given here."),
     "effects": ("clockfall.app.effects", "The installed effects; 'effects show NAME' reads one."),
     "show": ("clockfall.app.show", "Read a result file."),

@@ -8,8 +8,9 @@ from pathlib import Path
 import click
 import numpy as np
 
-from clockfall.analysis.outcome import Finding, Outcome
+from clockfall.analysis.outcome import Outcome
 from clockfall.app.analyses import analysis, system_of
+from clockfall.binary.ranges import FloatArray
 from clockfall.effects.loading import load_host
 from clockfall.files.results import read_result
 
@@ -47,15 +48,20 @@ def command(ctx: click.Context, result: Path, *, as_json: bool, quiet: bool, deb
 
 def compare(first: Outcome, second: Outcome) -> dict[str, float]:
     """Return the largest relative difference of each finding; infinite where one of the two lacks it."""
-    one, other = ({f.name: f for f in outcome.findings} for outcome in (first, second))
+    one, other = _numbers(first), _numbers(second)
     return {
         name: _difference(one[name], other[name]) if name in one and name in other else float("inf")
         for name in sorted({*one, *other})
     }
 
 
-def _difference(one: Finding, other: Finding) -> float:
-    a, b = (np.append(finding.drawn.draws, finding.drawn.central) for finding in (one, other))
+def _numbers(outcome: Outcome) -> dict[str, FloatArray]:
+    """Return every finding with its draws, and every column, by name."""
+    numbers = {f.name: np.append(f.drawn.draws, f.drawn.central) for f in outcome.findings}
+    return numbers | {column.name: column.values.astype(np.float64) for column in outcome.columns}
+
+
+def _difference(a: FloatArray, b: FloatArray) -> float:
     if a.shape != b.shape or not np.array_equal(np.isnan(a), np.isnan(b)):
         return float("inf")
     scale = np.nanmax(np.abs(a), initial=0.0)

@@ -257,6 +257,8 @@ class Applied:
         found: dict[str, dict[str, FloatArray]] = {}
         for contribution in self.predicted_parameters():
             values = (instead or {}).get(contribution.name, contribution.values)
+            if np.all(np.isnan(values)):  # without meaning, as where sin i > 1: as if it were not known
+                continue
             found.setdefault(contribution.card.name, {})[contribution.name] = np.asarray(values)[..., None]
         return found
 

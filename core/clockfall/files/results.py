@@ -22,9 +22,10 @@ from typing import Any, Final
 import numpy as np
 
 from clockfall.analysis.draws import MOST_DRAWS
-from clockfall.analysis.outcome import Drawn, Finding, Outcome, Said, UsedEffect
+from clockfall.analysis.outcome import Column, Drawn, Finding, Outcome, Said, UsedEffect
 from clockfall.analysis.study import Choices
 from clockfall.binary.constants import CONSTANTS
+from clockfall.binary.epoch import Epoch
 from clockfall.errors import BadInput
 from clockfall.files.units import cf_units
 from clockfall.files.whole import written_whole
@@ -118,7 +119,7 @@ def _write(file: Any, result: Result) -> None:
         "format_name": FORMAT_NAME,
         "format_version": FORMAT_VERSION,
         "command": result.command,
-        "choices": json.dumps(dataclasses.asdict(result.choices)),
+        "choices": json.dumps(dataclasses.asdict(dataclasses.replace(result.choices, times=None))),
         "facts": json.dumps(dict(outcome.facts)),
         "draws": outcome.draws,
         "seed": outcome.seed,
@@ -135,6 +136,10 @@ def _write(file: Any, result: Result) -> None:
         _scale(file, "draw", np.arange(1, outcome.draws + 1), "number of the draw")
     for number, finding in enumerate(outcome.findings):
         _write_finding(file, finding, number)
+    if outcome.columns:
+        _scale(file, "row", np.arange(1, outcome.columns[0].values.size + 1), "number of the row")
+    for number, column in enumerate(outcome.columns):
+        _write_column(file, column, number)
     for table, rows in _text_tables(outcome).items():
         if rows:
             _write_table(file, table, rows, text)
@@ -169,6 +174,24 @@ def _write_finding(file: Any, finding: Finding, number: int) -> None:
         "effect": finding.effect,
         "nature": finding.nature,
         "sources": "\n".join(finding.sources),
+    }
+    for name, value in attributes.items():
+        if value != "":
+            dataset.attrs[name] = value
+
+
+def _write_column(file: Any, column: Column, number: int) -> None:
+    dataset = file.create_dataset(column.name, data=column.values)
+    dataset.dims[0].attach_scale(file["row"])
+    attributes: dict[str, Any] = {
+        "units": cf_units(column.unit),
+        "long_name": column.meaning,
+        "column": number,
+        "unit": column.unit,
+        "shown_in": column.shown_in,
+        "effect": column.effect,
+        "nature": column.nature,
+        "sources": "\n".join(column.sources),
     }
     for name, value in attributes.items():
         if value != "":
@@ -286,6 +309,7 @@ def _read(file: Any, path: Path) -> Result:
         cautions=tuple(Said(**row) for row in tables["caution"]),
         draws=draws,
         seed=int(file.attrs["seed"]),
+        columns=tuple(column for _, column in sorted(_read_columns(file), key=lambda numbered: numbered[0])),
     )
     text = str(file["system_text"].asstr()[()])
     prefix = "version_"
@@ -307,7 +331,32 @@ def _read_choices(file: Any) -> Choices:
         use=tuple(str(name) for name in raw["use"]),
         solve_for=str(raw.get("solve_for", "")),
         limit=str(raw.get("limit", "")),
+        times=_read_times(file) if not raw.get("phases", 1) else None,
+        phases=int(raw.get("phases", 24)),
+        by="emission" if raw.get("by") == "emission" else "arrival",
+        rates="measured" if raw.get("rates") == "measured" else "predicted",
     )
+
+
+def _read_times(file: Any) -> Epoch:
+    """Return the times of a table of delays, which its choices name by their columns alone."""
+    return Epoch(np.asarray(file["time_day"][()]), np.asarray(file["time_fraction"][()]))
+
+
+def _read_columns(file: Any) -> Iterator[tuple[int, Column]]:
+    rows = len(file["row"]) if "row" in file else 0
+    for name, dataset in file.items():
+        attributes = dataset.attrs
+        if "column" not in attributes:
+            continue
+        values = np.asarray(dataset[()])
+        if values.shape != (rows,) or values.dtype.kind not in "fi":
+            raise ValueError(f"{name} has shape {values.shape}, expected ({rows},) numbers")
+        values = values.astype(np.int64 if values.dtype.kind == "i" else np.float64)
+        text = {key: str(attributes.get(key, "")) for key in ("unit", "shown_in", "effect", "nature")}
+        sources = tuple(str(attributes["sources"]).split("\n")) if "sources" in attributes else ()
+        column = Column(name, values, meaning=str(attributes.get("long_name", "")), sources=sources, **text)
+        yield int(attributes["column"]), column
 
 
 def _read_findings(file: Any, draws: int) -> Iterator[tuple[int, Finding]]:
