@@ -23,6 +23,7 @@ if TYPE_CHECKING:
 
 _PATCHES: Final = 4
 _NODES: Final = 128
+_TRIMS: Final = 12  # each at least halves the length, and no ridge is 4000 times longer than what counts of it
 _CLOSE: Final = 0.02  # of its width: how well the middle of a slice need be known, which is a coordinate only
 _SLACK: Final = 1e-4  # of chi-squared, likewise
 _SIDE: Final = 6.5  # sigmas; a normal distribution is negligible there, others are given more
@@ -98,17 +99,26 @@ def _along_ridge(likelihood: Likelihood, mode: FloatArray) -> Patch:
     ridge = _Ridge(likelihood, mode, axes)
     marks = [*reversed(list(ridge.walked(-0.5))), (0.0, 0.0, 1.0), *ridge.walked(0.5)]
     u, v, width = (np.array(column) for column in zip(*marks, strict=True))
-    nodes = np.linspace(u[0], u[-1], _NODES)
-    guess = CubicSpline(u, v)(nodes) if u.size > 3 else np.interp(nodes, u, v)
-    middle, across, squared = ridge.least(nodes, guess, np.interp(nodes, u, width))
-    good = np.isfinite(squared)
-    middle = np.where(good, middle, guess)
-    across = np.interp(nodes, nodes[good], across[good])
-    peak = float(np.min(squared[good]))
-    near = np.flatnonzero(good & (squared < peak + FAR))
-    first, last = max(0, int(near[0]) - 1), min(_NODES - 1, int(near[-1]) + 1)
-    centre, log_width = CubicSpline(nodes, middle), CubicSpline(nodes, np.log(across))
-    return Patch(mode, axes, centre, log_width, (float(nodes[first]), float(nodes[last])), (-_SIDE, _SIDE))
+    ends = float(u[0]), float(u[-1])
+    for _ in range(_TRIMS):
+        nodes = np.linspace(*ends, _NODES)
+        guess = CubicSpline(u, v)(nodes) if u.size > 3 else np.interp(nodes, u, v)
+        middle, across, squared = ridge.least(nodes, guess, np.interp(nodes, u, width))
+        good = np.isfinite(squared)
+        above = np.where(good, squared, np.inf) - np.min(squared[good])
+        ends, wanted = _ends(nodes, above, FAR), _ends(nodes, above, -2.0 * np.log(NEGLIGIBLE))
+        if wanted[1] - wanted[0] > 0.5 * (ends[1] - ends[0]):
+            break
+        ends = wanted  # a tail that is a little too low, and far longer than the rest, would take all the cells
+    centre = CubicSpline(nodes, np.where(good, middle, guess))
+    log_width = CubicSpline(nodes, np.log(np.interp(nodes, nodes[good], across[good])))
+    return Patch(mode, axes, centre, log_width, ends, (-_SIDE, _SIDE))
+
+
+def _ends(nodes: FloatArray, above: FloatArray, limit: float) -> tuple[float, float]:
+    """Return the nodes next to those at which chi-squared is less than `limit` above its least."""
+    near = np.flatnonzero(above < limit)
+    return float(nodes[max(0, int(near[0]) - 1)]), float(nodes[min(nodes.size - 1, int(near[-1]) + 1)])
 
 
 @dataclass(frozen=True, slots=True, eq=False)
