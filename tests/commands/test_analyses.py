@@ -18,7 +18,7 @@ def is_number(found: Any) -> bool:
     return isinstance(found, dict) and {"value", "uncertainty", "interval", "unit"} <= set(found)
 
 
-@pytest.mark.parametrize("name", ["decay", "rates", "weigh", "inspiral"])
+@pytest.mark.parametrize("name", ["decay", "rates", "weigh", "inspiral", "delays"])
 def test_every_analysis_runs_on_the_demo(clockfall: Command, name: str) -> None:
     """With no file an analysis runs on the demo, says so, and fits 80 columns without colour."""
     said = clockfall(name)

@@ -181,14 +181,16 @@ def setting(system: System, *names: str) -> tuple[Posterior, Likelihood]:
     of = of.averaged_near(found.best_fit)
     assert of.draws == found.nuisance_draws
     # where the inputs' covariance stood for them, brute force averages over their draws all the same
-    return found, of if of.draws else replace(of, draws=128)
+    return found, of if of.draws else replace(of, draws=64)
 
 
 @pytest.mark.parametrize(
     ("system", "names", "size"),
     [
         pytest.param(PULSAR, (ADVANCE, GAMMA), 400, id="B1913+16 by advance and gamma"),
-        pytest.param(DOUBLE_PULSAR, (ADVANCE, SHAPE), 360, id="double pulsar by advance and shape"),
+        pytest.param(
+            DOUBLE_PULSAR, (ADVANCE, SHAPE), 360, id="double pulsar by advance and shape", marks=pytest.mark.slow
+        ),
         pytest.param(PULSAR, (ADVANCE, GAMMA, DECAY), 400, id="B1913+16 by three", marks=pytest.mark.slow),
     ],
 )

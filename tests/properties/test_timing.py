@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
@@ -14,8 +15,10 @@ from clockfall.binary.constants import SECONDS_PER_YEAR, T_SUN
 from clockfall.binary.epoch import Epoch
 from clockfall.binary.orbit import SecularMotion
 from clockfall.binary.state import BinaryState
+from clockfall.effects import Card, Delay, hook
 from clockfall.effects.host import Applied
-from clockfall.effects.loading import load_host
+from clockfall.effects.loading import Candidate, installed_candidates, load_host
+from clockfall.errors import OutOfRange
 
 HOST = load_host(strict=True)
 DEG_PER_YEAR = math.pi / 180.0 / SECONDS_PER_YEAR
@@ -212,3 +215,135 @@ def test_moving_an_orbit_is_the_same_as_carrying_it() -> None:
         assert np.all(away < slack + 1e-12)
         assert np.allclose(np.hypot(moved.sin_E, moved.cos_E), 1.0, rtol=0, atol=1e-15 * 4)
         assert np.allclose(np.hypot(moved.sin_omega, moved.cos_omega), 1.0, rtol=0, atol=1e-15 * 4)
+
+
+def only_roemer(state: BinaryState) -> Applied:
+    """Return the Roemer delay alone."""
+    return HOST.apply(state, only=("roemer-delay",))
+
+
+def steady(case: Case) -> Case:
+    """Return the case without any change of the elements."""
+    none = dict.fromkeys(("P_rate", "P_second", "e_rate", "x_rate", "drift", "second_drift", "advance"), 0.0)
+    return replace(case, **none)
+
+
+@pytest.mark.parametrize("e", [0.1, 0.6])
+def test_the_published_closed_inverse(e: float) -> None:
+    """The closed inverse of Damour & Deruelle agrees to its own order: what it drops goes as (n x)^3 times x.
+
+    Damour & Deruelle 1986, eqs. (46-52) (numbers from memory): Delta = D [1 - m D' + (m D')^2 + m^2 D D''/2
+    - e sin E/(1 - e cos E) m^2 D D'/2], m = n/(1 - e cos E), D of E at the arrival, primes by E.
+    """
+    errors = []
+    for x in (1.0, 2.0, 4.0):
+        case = steady(Case(0.3, e, x))
+        motion, times = case.motion(), arrivals(400)
+        exact = delays(only_roemer(case.state()), motion, times).total
+        orbit = motion.at(*motion.seconds(times))
+        sin_w, cos_w, root = orbit.sin_omega, orbit.cos_omega, orbit.root
+        D = x * (sin_w * (orbit.cos_E - e) + root * cos_w * orbit.sin_E)
+        D_1 = x * (-sin_w * orbit.sin_E + root * cos_w * orbit.cos_E)
+        D_2 = -x * (sin_w * orbit.cos_E + root * cos_w * orbit.sin_E)
+        m = orbit.eccentric_rate
+        bend = e * orbit.sin_E / orbit.one_minus_e_cos_E
+        closed = D * (1 - m * D_1 + (m * D_1) ** 2 + m**2 * D * D_2 / 2 - bend * m**2 * D * D_1 / 2)
+        errors.append(float(np.max(np.abs(closed - exact))))
+    n = 2 * math.pi / (0.3 * 86400.0)
+    assert errors[2] < 30.0 * (n * 4.0 / (1 - e)) ** 3 * 4.0
+    slopes = np.diff(np.log(errors)) / math.log(2.0)
+    assert slopes == pytest.approx([4.0, 4.0], abs=0.1)
+
+
+def test_the_low_eccentricity_expansion() -> None:
+    """The two-term expansion in e agrees to its own order, e^2 x: Lange et al. 2001, MNRAS 326, 274 (from memory).
+
+    x [sin Phi + (kappa/2) sin 2 Phi - (eta/2) cos 2 Phi] - (3/2) x eta, Phi the mean longitude from the node, eta = e
+    sin omega, kappa = e cos omega.
+    """
+    errors = []
+    for e in (1e-4, 1e-3, 1e-2):
+        case = steady(Case(0.3, e, 2.0))
+        motion, times = case.motion(), arrivals(400)
+        exact = delays(only_roemer(case.state()), motion, times, by="emission").total
+        orbit = motion.at(*motion.seconds(times))
+        Phi, eta, kappa = orbit.mean_anomaly + case.omega, e * math.sin(case.omega), e * math.cos(case.omega)
+        short = 2.0 * (np.sin(Phi) + 0.5 * kappa * np.sin(2 * Phi) - 0.5 * eta * np.cos(2 * Phi)) - 3.0 * eta
+        errors.append(float(np.max(np.abs(short - exact))))
+    assert np.diff(np.log10(errors)) == pytest.approx([2.0, 2.0], abs=0.05)
+    assert errors[0] < 3.0 * 1e-8 * 2.0
+
+
+def test_a_circular_orbit_is_smooth() -> None:
+    """Through e = 0 the delays are continuous: the difference from the circular orbit goes as e, down to rounding."""
+    times = arrivals(300)
+    circle = steady(Case(0.3, 0.0, 2.0))
+    parameters = {name: np.array(value) for name, value in circle.parameters().items()}
+
+    def total(e: float) -> np.ndarray:
+        case = replace(circle, e=e)
+        return delays(applied(case.state()), case.motion(), times, instead=parameters).total
+
+    differences = [float(np.max(np.abs(total(e) - total(0.0)))) for e in (1e-4, 1e-6, 1e-8, 1e-10)]
+    assert np.diff(np.log10(differences)) == pytest.approx([-2.0] * 3, abs=0.02)
+    assert float(np.max(np.abs(total(1e-300) - total(0.0)))) == 0.0
+
+
+def test_a_third_partys_delay_takes_part_in_the_inversion() -> None:
+    """A delay of a third party, without a rate, is inverted with the rest: arrival less delay is emission."""
+
+    def describe() -> Card:
+        return Card(
+            name="wind", summary="A wind.", formula="-", sources=("invented",), order="-", valid="-", needs=(),
+            gives=(), delay="wind of the companion",
+        )  # fmt: skip
+
+    def delay(orbit: object) -> Delay:
+        return Delay(1e-3 * orbit.cos_E**2)  # type: ignore[attr-defined]
+
+    plugin = SimpleNamespace(describe=hook(describe), delay=hook(delay))
+    host = load_host([*installed_candidates(), Candidate("wind", "test", "0", lambda: plugin)], strict=True)
+    case = CASES["short and eccentric"]
+    found = delays(
+        host.apply(case.state(), only=(*PLAIN, "wind")), case.motion(), arrivals(50),
+        instead={k: np.array(v) for k, v in case.parameters().items()},
+    )  # fmt: skip
+    assert float(np.max(found.by_effect["wind"])) > 1e-4
+    again = case.motion().at(found.emission)
+    # emission in one double is good to 2e-7 s over fifty years; cos^2 E changes by n/(1 - e) of it
+    assert found.by_effect["wind"] == pytest.approx(1e-3 * again.cos_E**2, abs=1e-3 * 3e-7 * 1e-2)
+    seconds, low = case.motion().seconds(arrivals(50))
+    assert found.total == pytest.approx((seconds - found.emission) + low, abs=3e-7)
+
+
+def test_a_batch_is_what_its_members_are() -> None:
+    """A batch of orbits gives what each one gives alone, whatever the blocks the times are cut into."""
+    cases = [CASES["short and eccentric"], CASES["edge-on"]]
+    times = arrivals(33)
+    names = ("period_rate", "period_second_rate", "advance_per_radian", "drift", "second_drift", "eccentricity_rate")
+    states = [case.state() for case in cases]
+    together = {
+        name: np.array([float(getattr(state, name)) for state in states])
+        for name in ("mass_1", "mass_2", "orbital_period", "eccentricity", "longitude_of_periastron")
+    }
+    epoch = states[0].periastron_epoch
+    assert epoch is not None
+    state = BinaryState(
+        **together,
+        projected_semi_major_axis=np.array([case.x for case in cases]),
+        periastron_epoch=epoch.broadcast_to((2,)),
+    )
+    motions = [case.motion() for case in cases]
+    rates = [np.array([float(getattr(m, name)) for m in motions]) for name in names]
+    motion = SecularMotion(state, *rates, axis_rate=np.array([float(m.axis_rate) for m in motions]))
+    both = delays(only_roemer(state), motion, times).total
+    for k, case in enumerate(cases):
+        alone = delays(only_roemer(case.state()), case.motion(), times).total
+        assert both[k] == pytest.approx(alone, rel=0, abs=2e-12)
+
+
+def test_a_period_that_its_rates_no_longer_describe() -> None:
+    """So far away that the period would have changed by a twentieth, a time is refused with the change."""
+    case = replace(CASES["edge-on"], P_rate=-1e-6)
+    with pytest.raises(OutOfRange, match="two rates do not describe"):
+        case.motion().at(np.array([1e9]))

@@ -7,7 +7,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
 from types import MappingProxyType
-from typing import Final
+from typing import Any, Final
 
 import numpy as np
 import numpy.typing as npt
@@ -133,7 +133,7 @@ class Column:
     """
 
     name: str
-    values: FloatArray | npt.NDArray[np.int64]
+    values: npt.NDArray[Any]
     unit: str
     shown_in: str
     meaning: str

@@ -26,6 +26,7 @@ BLOCK: Final = 16_384
 """Times worked on at once for one binary: they stay in the cache."""
 
 _ROUNDS: Final = 30
+_STRAIGHT: Final = 1e-6  # s; over it delays are straight: their curvature, below 1e-2 per second, leaves 1e-14 s
 _STILL: Final = 1e-13  # s, of emission time; the step after it would be smaller by a thousand and more
 
 
@@ -126,15 +127,23 @@ def _found(
         # Newton's step on T + sum(T) = t
         step = -(since + value) / (1.0 + rate)
         since = since + step
+        largest = float(np.max(np.abs(step), initial=0.0))
+        if largest < _STRAIGHT and all(delay.rate is not None for _, delay in found):
+            return orbit.shifted(step), tuple((card, _shifted(delay, step)) for card, delay in found)
         orbit = start.moved(since)
         found = applied.delays(orbit, parameters)
-        if np.max(np.abs(step), initial=0.0) < _STILL:
+        if largest < _STILL:
             return orbit, found
     lost = int(np.sum(np.abs(step) >= _STILL))
     raise NotInverted(
         f"{lost} of {step.size} arrivals have no one emission time: the delays change as fast as time itself; check "
         "the projected semi-major axis and the period"
     )
+
+
+def _shifted(delay: Delay, step: FloatArray) -> Delay:
+    assert delay.rate is not None
+    return Delay(delay.seconds + delay.rate * step, delay.rate)
 
 
 def _sum(found: Found, shape: tuple[int, ...]) -> tuple[FloatArray, FloatArray]:

@@ -16,14 +16,13 @@ from clockfall.app.analyses import Analysis, Block, masses_from
 from clockfall.app.options import Wishes, analysis_options, draw_option, run_analysis
 from clockfall.binary.epoch import Epoch
 from clockfall.errors import BadInput
+from clockfall.figures.delay_chart import DelayCurves, unit_of
 
 ROWS: Final = 60
 """The most rows that are printed; a longer table is for --json, --out and --draw."""
 
 ACROSS: Final = 5
 """Columns side by side."""
-
-UNITS: Final = ((1.0, "s"), (1e-3, "ms"), (1e-6, "us"), (1e-9, "ns"), (1e-12, "ps"))
 
 
 def effects_of(outcome: Outcome) -> list[Column]:
@@ -34,6 +33,17 @@ def effects_of(outcome: Outcome) -> list[Column]:
 def times_of(outcome: Outcome) -> Epoch:
     """Return the times of the table; shape (rows,)."""
     return Epoch(np.asarray(outcome.column("time_day").values), outcome.column("time_fraction").values)
+
+
+def curves_of(outcome: Outcome) -> DelayCurves:
+    """Return the delays as a picture shows them."""
+    over_orbit = bool(outcome.facts["over"])
+    times = times_of(outcome)
+    at = outcome.column("orbital_phase").values if over_orbit else times.to_mjd()
+    label = "orbital phase, mean anomaly from periastron [turns]" if over_orbit else f"{outcome.facts['by']} [MJD, TDB]"
+    return DelayCurves(
+        np.asarray(at), label, over_orbit, tuple((c.effect or "total", c.values) for c in effects_of(outcome))
+    )
 
 
 def report(outcome: Outcome) -> dict[str, Any]:
@@ -56,12 +66,6 @@ def _mjd(times: Epoch, k: int, digits: int = 15) -> str:
     fraction = f"{float(times.fraction[k]):.{digits}f}"
     whole = int(times.day[k]) + (1 if fraction.startswith("1") else 0)
     return f"{whole}.{fraction.split('.')[1]}"
-
-
-def unit_of(values: np.ndarray) -> tuple[float, str]:
-    """Return the unit [s] in which the largest of some delays reads well, and its name."""
-    largest = float(np.max(np.abs(values), initial=0.0))
-    return next(((size, name) for size, name in UNITS if largest >= size), UNITS[-1] if largest else UNITS[0])
 
 
 def blocks(outcome: Outcome) -> Iterator[Block]:

@@ -20,7 +20,7 @@ from clockfall.files.results import read_result
     "--picture",
     "kind",
     type=click.Choice(PICTURES),
-    help="Default: the budget of a decay, the masses of a weighing.",
+    help="Default: the budget of a decay, the masses of a weighing, the delays of delays.",
 )
 @click.option("--out", required=True, type=click.Path(path_type=Path), help="Where to: .svg, .pdf or .png.")
 @click.option("--years", nargs=2, type=float, metavar="FROM TO", help="Of the shift, in Julian years.")
@@ -44,7 +44,8 @@ def command(
     """Draw the file RESULT.
 
     budget: what each effect adds to the rate of the orbital period. masses: the plane of the two masses with the band
-    that each measured parameter allows. shift: how far periastron runs ahead of a constant period.
+    that each measured parameter allows. shift: how far periastron runs ahead of a constant period. delays: each
+    effect's delay against orbital phase or time.
     """
     del debug  # read by clockfall.app.main before any option is parsed
     check_picture(out, overwrite=overwrite)

@@ -12,9 +12,11 @@ from clockfall.analysis.outcome import Outcome
 from clockfall.analysis.study import Choices
 from clockfall.analysis.system import System
 from clockfall.analysis.weighing import study
+from clockfall.app.delays import curves_of
 from clockfall.effects.host import Host
 from clockfall.errors import BadInput
 from clockfall.figures.budget_chart import budget_chart
+from clockfall.figures.delay_chart import delay_chart
 from clockfall.figures.masses_plane import WeighedMasses, masses_plane
 from clockfall.figures.periastron_shift import TimedShifts, periastron_shift
 from clockfall.figures.plane import close_axis, plane, whole_axis
@@ -23,10 +25,10 @@ from clockfall.figures.saving import save
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
-USUAL: Final = {"decay": "budget", "weigh": "masses"}
+USUAL: Final = {"decay": "budget", "weigh": "masses", "delays": "delays"}
 """Analysis -> the picture of it."""
 
-PICTURES: Final = ("budget", "masses", "shift")
+PICTURES: Final = ("budget", "masses", "shift", "delays")
 
 
 @dataclass(frozen=True, slots=True)
@@ -62,10 +64,14 @@ def picture(
     NoMatplotlib
         The extra is not installed.
     """
-    if kind != USUAL.get(analysis) and not (analysis == "decay" and kind in PICTURES):
-        raise BadInput(f"a result of {analysis!r} has no picture {kind!r}; one of 'decay' has")
+    allowed = ("budget", "masses", "shift") if analysis == "decay" else (USUAL.get(analysis),)
+    if kind not in allowed:
+        owner = "delays" if kind == "delays" else "decay"
+        raise BadInput(f"a result of {analysis!r} has no picture {kind!r}; one of {owner!r} has")
     if kind == "budget":
         return budget_chart(outcome)
+    if kind == "delays":
+        return delay_chart(curves_of(outcome), system.name)
     if kind == "masses":
         return _masses(analysis, outcome, system, host, choices)
     return _shift(outcome, system, shift or Shift())

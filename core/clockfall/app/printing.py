@@ -11,7 +11,7 @@ from rich.console import Console
 from rich.table import Table
 from rich.text import Text
 
-from clockfall.analysis.outcome import Outcome
+from clockfall.analysis.outcome import Column, Finding, Outcome
 from clockfall.app.analyses import Analysis, Block, full_report
 
 
@@ -64,7 +64,8 @@ def _notes(outcome: Outcome) -> Iterator[Block]:
         yield Block(rows, title="Cautions")
     if outcome.idle:
         yield Block(tuple((said.effect, said.text) for said in outcome.idle), title="Idle effects")
-    sources = {f.effect: f.sources for f in outcome.findings if f.effect and f.sources}
+    found: list[Finding | Column] = [*outcome.findings, *outcome.columns]
+    sources = {item.effect: item.sources for item in found if item.effect and item.sources}
     if sources:
         rows = tuple(
             (effect if first else "", source)

@@ -8,7 +8,7 @@ anomaly counts periods that change steadily; the advance of periastron follows t
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Final
 
@@ -25,6 +25,8 @@ LARGEST_PERIOD_CHANGE: Final = 0.05
 """Of the period, relative: beyond it two rates do not describe the period any more."""
 
 _NEAR: Final = 0.4  # rad of eccentric anomaly by which an orbit is moved with series; ten terms leave 1e-17 there
+_NARROW: Final = 1e-3  # 1 - e below which 1 - cos E needs more than the difference
+_SMALL: Final = 1e-3  # rad by which omega turns with two terms of a series; the third is 1e-23
 _CUBIC: Final = tuple((-1) ** k / math.factorial(2 * k + 3) for k in range(7))
 _VERSINE: Final = tuple((-1) ** k / math.factorial(2 * k + 2) for k in range(7))
 _TWO_PI: Final = 2.0 * math.pi
@@ -193,8 +195,10 @@ class Orbit:
     @cached_property
     def one_minus_e_cos_E(self) -> FloatArray:
         """The distance of the bodies over the semi-major axis [1], without loss near periastron."""
-        half = self.sin_E**2 / np.where(self.cos_E > 0.0, 1.0 + self.cos_E, 1.0)
-        versine = np.where(self.cos_E > 0.0, half, 1.0 - self.cos_E)
+        versine = 1.0 - self.cos_E
+        if np.min(self.one_minus_eccentricity) < _NARROW:
+            near = self.cos_E > 0.0
+            versine = np.where(near, self.sin_E**2 / np.where(near, 1.0 + self.cos_E, 1.0), versine)
         return self.one_minus_eccentricity + self.eccentricity * versine
 
     @cached_property
@@ -218,6 +222,12 @@ class Orbit:
         assert epoch is not None
         return epoch.plus_seconds(self.seconds).plus_seconds(self.low)
 
+    def shifted(self, dT: FloatArray) -> Orbit:
+        """Return the orbit microseconds later: its time and mean anomaly; all else hardly changes, and is left."""
+        seconds, low = two_sum(self.seconds, dT)
+        M = self.mean_anomaly + self.mean_motion * dT
+        return replace(self, seconds=seconds, low=self.low + low, mean_anomaly=M)
+
     def moved(self, dT: FloatArray) -> Orbit:
         """Return the orbit a little later, by series about this one.
 
@@ -228,7 +238,7 @@ class Orbit:
         """
         e, r = self.eccentricity, self.one_minus_e_cos_E
         dM = self.mean_motion * dT
-        d = _kepler_step(dM, r, e * self.sin_E, e * self.cos_E)
+        d, cubic, versine = _kepler_step(dM, r, e * self.sin_E, e * self.cos_E)
         if np.max(np.abs(d), initial=0.0) > _NEAR:
             E = np.asarray(
                 eccentric_anomaly(self.mean_anomaly + dM, e, one_minus_eccentricity=self.one_minus_eccentricity)
@@ -236,13 +246,15 @@ class Orbit:
             sin_E, cos_E = np.sin(E), np.cos(E)
         else:
             E = self.eccentric_anomaly + d
-            sin_d, versine = d - _cubic(d), _versine(d)
+            sin_d = d - cubic
             sin_E = self.sin_E + (self.cos_E * sin_d - self.sin_E * versine)
             cos_E = self.cos_E - (self.sin_E * sin_d + self.cos_E * versine)
         half = _beta(e, self.one_minus_eccentricity)
-        nu = E + 2.0 * np.arctan2(half * sin_E, 1.0 - half * cos_E)
-        turned = self.advance_per_radian * (nu - self.true_anomaly) + self.drift * dT
-        sin_t, versine_t = np.sin(turned), 2.0 * np.sin(0.5 * turned) ** 2
+        # the half angles by which both true anomalies run ahead of the eccentric ones, subtracted as tangents
+        before, after = half * self.sin_E / (1.0 - half * self.cos_E), half * sin_E / (1.0 - half * cos_E)
+        moved = (E - self.eccentric_anomaly) + 2.0 * np.arctan((after - before) / (1.0 + after * before))
+        turned = self.advance_per_radian * moved + self.drift * dT
+        sin_t, versine_t = _sine_and_versine(turned)
         seconds, low = two_sum(self.seconds, dT)
         return Orbit(
             state=self.state,
@@ -253,7 +265,7 @@ class Orbit:
             eccentric_anomaly=E,
             sin_E=sin_E,
             cos_E=cos_E,
-            true_anomaly=nu,
+            true_anomaly=self.true_anomaly + moved,
             longitude_of_periastron=self.longitude_of_periastron + turned,
             sin_omega=self.sin_omega + (self.cos_omega * sin_t - self.sin_omega * versine_t),
             cos_omega=self.cos_omega - (self.sin_omega * sin_t + self.cos_omega * versine_t),
@@ -301,27 +313,27 @@ def _orbits(
     return whole + more, rest - more
 
 
-def _kepler_step(dM: FloatArray, r: FloatArray, e_sin: FloatArray, e_cos: FloatArray) -> FloatArray:
-    """Solve Kepler's equation for the step of E that belongs to a step of M, by Newton's method on short series."""
+def _kepler_step(
+    dM: FloatArray, r: FloatArray, e_sin: FloatArray, e_cos: FloatArray
+) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Solve Kepler's equation for the step d of E that belongs to a step of M; return d, d - sin d and 1 - cos d.
+
+    Newton's method on short series; where d is large the answer is rough, and to be thrown away.
+    """
     d = np.clip(dM / r, -1.0, 1.0)
+    largest = float(np.max(np.abs(d), initial=0.0))
+    terms = 4 if largest < 0.03 else 5 if largest < 0.1 else 7  # each leaves 1e-17
     for _ in range(8):
-        value = r * d + e_cos * _cubic(d) + e_sin * _versine(d) - dM
-        slope = r + e_cos * _versine(d) + e_sin * (d - _cubic(d))
+        t = d * d
+        cubic, versine = d * _series(t, _CUBIC[:terms]), _series(t, _VERSINE[:terms])
+        value = r * d + e_cos * cubic + e_sin * versine - dM
+        slope = r + e_cos * versine + e_sin * (d - cubic)
         step = value / np.where(slope > 0.0, slope, r)
         d = np.clip(d - step, -1.0, 1.0)
         if np.max(np.abs(step), initial=0.0) < 1e-9:  # the next one would be the square of it
             break
-    return d
-
-
-def _cubic(d: FloatArray) -> FloatArray:
-    """Return d - sin d by its series; 1e-17 at 0.4."""
-    return d * _series(d * d, _CUBIC)
-
-
-def _versine(d: FloatArray) -> FloatArray:
-    """Return 1 - cos d by its series; 1e-17 at 0.4."""
-    return _series(d * d, _VERSINE)
+    # to the last digit: both change by their slopes times the last step
+    return d, cubic - step * versine, versine - step * (d - cubic)
 
 
 def _series(t: FloatArray, coefficients: tuple[float, ...]) -> FloatArray:
@@ -331,3 +343,11 @@ def _series(t: FloatArray, coefficients: tuple[float, ...]) -> FloatArray:
         total += coefficient
         total *= t
     return total
+
+
+def _sine_and_versine(angle: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Return sin and 1 - cos of angles that are small as a rule."""
+    if np.max(np.abs(angle), initial=0.0) > _SMALL:
+        return np.sin(angle), 2.0 * np.sin(0.5 * angle) ** 2
+    t = angle * angle
+    return angle * (1.0 - t * (1.0 / 6.0 - t / 120.0)), t * (0.5 - t / 24.0)

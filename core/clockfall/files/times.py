@@ -101,7 +101,8 @@ def read_times(path: Path) -> Epoch:
         It cannot be read, or a line is no time: the first few are told with their numbers.
     """
     try:
-        head = path.open("rb").read(8)
+        with path.open("rb") as file:
+            head = file.read(8)
     except OSError as error:
         raise BadInput(f"{path}: cannot be read ({error.strerror})") from error
     return _from_hdf5(path) if head == b"\x89HDF\r\n\x1a\n" else _from_text(path)
