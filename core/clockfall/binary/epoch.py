@@ -404,12 +404,12 @@ def two_sum(a: FloatArray, b: FloatArray) -> tuple[FloatArray, FloatArray]:
 def two_product(a: FloatArray, b: FloatArray | float) -> tuple[FloatArray, FloatArray]:
     """Return a b, rounded, and its exact error: T. J. Dekker, Numer. Math. 18, 224 (1971)."""
     product = a * b
-    a_high, a_low = _halves(a)
-    b_high, b_low = _halves(b)
+    a_high, a_low = halves(a)
+    b_high, b_low = halves(b)
     return product, ((a_high * b_high - product) + a_high * b_low + a_low * b_high) + a_low * b_low
 
 
-def _halves(a: FloatArray | float) -> tuple[Any, Any]:
+def halves(a: FloatArray | float) -> tuple[Any, Any]:
     """Return two numbers of 26 bits whose sum is exactly a: Dekker (1971), after G. W. Veltkamp."""
     scaled = _SPLITTER * a
     high = scaled - (scaled - a)

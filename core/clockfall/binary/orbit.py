@@ -15,7 +15,7 @@ from typing import Final
 import numpy as np
 
 from clockfall.binary.constants import SECONDS_PER_DAY
-from clockfall.binary.epoch import Epoch, two_product, two_sum
+from clockfall.binary.epoch import Epoch, halves, two_product, two_sum
 from clockfall.binary.kepler import eccentric_anomaly
 from clockfall.binary.ranges import FloatArray
 from clockfall.binary.state import BinaryState
@@ -77,12 +77,9 @@ class SecularMotion:
         """Return the time since the periastron epoch as the sum of two doubles [s]; shape batch + (times,)."""
         epoch = self.state.periastron_epoch
         assert epoch is not None
+        # whole days are exact in seconds; their rest is rounded at 1e-11 s, the resolution of an epoch
         days = (times.day - epoch.day[..., None]).astype(np.float64)
-        fraction, fraction_low = two_sum(times.fraction, -epoch.fraction[..., None])
-        whole, whole_low = two_product(days, SECONDS_PER_DAY)
-        part, part_low = two_product(fraction, SECONDS_PER_DAY)
-        seconds, low = two_sum(whole, part)
-        return seconds, low + (whole_low + part_low + fraction_low * SECONDS_PER_DAY)
+        return two_sum(days * SECONDS_PER_DAY, (times.fraction - epoch.fraction[..., None]) * SECONDS_PER_DAY)
 
     def at(self, seconds: FloatArray, low: FloatArray | float = 0.0) -> Orbit:
         """Return the orbit at emission times.
@@ -110,15 +107,17 @@ class SecularMotion:
             )  # fmt: skip
         whole, turn = _orbits(seconds, low, P, a, b)
         M = _TWO_PI * turn
-        e_t = e + self.eccentricity_rate[..., None] * seconds
-        o_t = o - self.eccentricity_rate[..., None] * seconds
+        e_t, o_t = e, o
+        if np.any(self.eccentricity_rate):
+            grown = self.eccentricity_rate[..., None] * seconds
+            e_t, o_t = e + grown, o - grown
         E = np.asarray(eccentric_anomaly(M, e_t, one_minus_eccentricity=o_t))
         n = _TWO_PI / (P * (1.0 + change))
         drift = (self.drift[..., None] + 0.5 * self.second_drift[..., None] * seconds) * seconds
         k = self.advance_per_radian[..., None]
         beta_half = _beta(e_t, o_t)
         sin_E, cos_E = np.sin(E), np.cos(E)
-        nu = E + 2.0 * np.arctan2(beta_half * sin_E, 1.0 - beta_half * cos_E)
+        nu = E + 2.0 * np.arctan(beta_half * sin_E / (1.0 - beta_half * cos_E))
         omega = omega_0 + (k * (nu + _TWO_PI * whole) + drift)
         return Orbit(
             state=state,
@@ -160,6 +159,7 @@ class Orbit:
     longitude_of_periastron : array [rad]
         omega, the accumulated advance included.
     eccentricity, one_minus_eccentricity : array [1]
+        Of shape batch + (1,) where they do not change.
     projected_semi_major_axis : array [ls]
     mean_motion : array [rad/s]
         n = 2 pi over the period of that time.
@@ -302,10 +302,14 @@ def _orbits(
     The count at a constant period is exact to rounding (Dekker 1971); what its change adds is the integral of 1/P(T) as
     a series in a T, whose first dropped term is (a T)^5/6 of the count.
     """
-    whole = np.rint(seconds / P)
-    product, product_low = two_product(whole, P)
-    rest = ((seconds - product) + (low - product_low)) / P
     orbits = seconds / P
+    whole = np.rint(orbits)
+    if np.max(np.abs(whole), initial=0.0) < 2.0**26:
+        high, tail = halves(P)  # of 26 bits each, so that a count of 26 bits times either of them is exact
+        rest = ((seconds - whole * high) - whole * tail + low) / P
+    else:
+        product, product_low = two_product(whole, P)
+        rest = ((seconds - product) + (low - product_low)) / P
     T = seconds
     series = T * (-a / 2.0 + T * ((a**2 - b) / 3.0 + T * (-(a**3 - 2.0 * a * b) / 4.0 + T * (a**4 - 3.0 * a**2 * b + b**2) / 5.0)))  # fmt: skip  # noqa: E501
     rest = rest + orbits * series
