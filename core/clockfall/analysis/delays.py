@@ -75,6 +75,8 @@ def delays_of(host: Host, system: System, choices: Choices | None = None) -> Out
 def _check(system: System, choices: Choices) -> None:
     known = {*system.fields, *(["periastron_epoch"] if system.periastron_epoch is not None else [])}
     known |= {"eccentricity"} & {"eccentricity" for name in known if name == "one_minus_eccentricity"}
+    if system.node_elements is not None:
+        known |= {"eccentricity", "longitude_of_periastron", "periastron_epoch"}
     missing = [name for name in _NEEDS if name not in known]
     if missing:
         raise BadInput(f"delays need {', '.join(missing)} in [orbit] of {system.name}")

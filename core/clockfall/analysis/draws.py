@@ -14,6 +14,7 @@ from typing import Any, Final
 import numpy as np
 import numpy.typing as npt
 
+from clockfall.analysis.node_elements import periastron_elements
 from clockfall.analysis.parallax import distances
 from clockfall.analysis.sobol import DIMENSIONS, sobol
 from clockfall.analysis.system import Correlation, System, Uncertain
@@ -51,6 +52,8 @@ class Sample:
         How many draws fell outside, by quantity.
     seed : int
         Of the scrambling.
+    counts_nodes : bool
+        Whether `orbital_period` is from node to node still; see `clockfall.analysis.node_elements`.
     """
 
     state: BinaryState
@@ -61,6 +64,7 @@ class Sample:
     possible: BoolArray
     set_aside: Mapping[str, int]
     seed: int
+    counts_nodes: bool = False
 
     @property
     def draws(self) -> int:
@@ -145,6 +149,13 @@ def draw(system: System, cards: tuple[Card, ...], *, draws: int = DEFAULT_DRAWS,
         fields["distance"] = far(system.parallax)
     if system.periastron_epoch is not None:
         fields["periastron_epoch"] = system.periastron_epoch.plus_seconds(values(("fields", "periastron_epoch")))
+    if system.node_elements is not None:
+        fields |= periastron_elements(
+            values(("fields", "eccentricity_sine")),
+            values(("fields", "eccentricity_cosine")),
+            system.node_elements.epoch.plus_seconds(values(("fields", "ascending_node_epoch"))),
+            fields["orbital_period"],
+        )
     return Sample(
         state=BinaryState(**fields) if fields else BinaryState(),
         measured=MappingProxyType({name: values(("measured", name)) for name in system.measured}),
@@ -159,6 +170,7 @@ def draw(system: System, cards: tuple[Card, ...], *, draws: int = DEFAULT_DRAWS,
         possible=possible,
         set_aside=MappingProxyType(set_aside),
         seed=seed,
+        counts_nodes=system.node_elements is not None,
     )
 
 
@@ -179,7 +191,7 @@ def _with_uncertain_defaults(system: System, cards: tuple[Card, ...]) -> System:
 
 def _range(path: Path, cards: tuple[Card, ...]) -> Range:
     """Return where the quantity at `path` has a meaning, in clockfall's unit."""
-    if path[0] == "fields" and path[1] != "periastron_epoch":
+    if path[0] == "fields" and path[1] in FIELDS and path[1] != "periastron_epoch":
         return FIELDS[path[1]].within
     if path[0] == "settings":
         own = next((card.own(path[2]) for card in cards if card.name == path[1]), None)

@@ -44,6 +44,26 @@ class Correlation:
 
 
 @dataclass(frozen=True, slots=True)
+class NodeElements:
+    """Laplace-Lagrange elements of a near-circular orbit, whose periastron is hard to place.
+
+    Attributes
+    ----------
+    sine, cosine : Uncertain
+        e sin omega and e cos omega.
+    epoch : Epoch, shape ()
+        A passage of the ascending node, where the mean longitude M + omega is 0 (MJD, TDB).
+    epoch_uncertainty : Uncertain
+        Its value is 0 [s].
+    """
+
+    sine: Uncertain
+    cosine: Uncertain
+    epoch: Epoch
+    epoch_uncertainty: Uncertain = Uncertain(0.0)
+
+
+@dataclass(frozen=True, slots=True)
 class System:
     """All that is known of one binary.
 
@@ -57,6 +77,8 @@ class System:
         A passage of periastron (MJD, TDB).
     periastron_epoch_uncertainty : Uncertain
         Its value is 0 [s].
+    node_elements : NodeElements or None
+        In the place of eccentricity, longitude and epoch of periastron; `orbital_period` then counts node passages.
     parallax : Uncertain or None
         [rad]; then `fields` has no distance.
     distance_prior : "none" or "volume"
@@ -78,6 +100,7 @@ class System:
     fields: Mapping[str, Uncertain]
     periastron_epoch: Epoch | None = None
     periastron_epoch_uncertainty: Uncertain = Uncertain(0.0)
+    node_elements: NodeElements | None = None
     parallax: Uncertain | None = None
     distance_prior: Literal["none", "volume"] = "none"
     measured: Mapping[str, Uncertain] = field(default_factory=lambda: _NOTHING)
@@ -98,6 +121,10 @@ class System:
             yield ("fields", name), value
         if self.periastron_epoch is not None:
             yield ("fields", "periastron_epoch"), self.periastron_epoch_uncertainty
+        if self.node_elements is not None:
+            yield ("fields", "eccentricity_sine"), self.node_elements.sine
+            yield ("fields", "eccentricity_cosine"), self.node_elements.cosine
+            yield ("fields", "ascending_node_epoch"), self.node_elements.epoch_uncertainty
         if self.parallax is not None:
             yield ("fields", "parallax"), self.parallax
         for name, value in sorted(self.measured.items()):

@@ -17,6 +17,7 @@ from clockfall.analysis.system import System
 from clockfall.analysis.weighing import (
     CannotWeigh,
     ambiguities,
+    by_measured_advance,
     central_solutions,
     finished,
     has_masses,
@@ -55,6 +56,7 @@ def weigh(host: Host, system: System, choices: Choices | None = None) -> Outcome
     """
     choices = (choices or Choices()).with_system(system)
     sample = draw(system, host.cards, draws=choices.draws, seed=choices.seed)
+    sample = by_measured_advance(sample)
     used = weighing_parameters(host, system, sample, choices)
     found: Posterior | None = None
     if _have_uncertainties(system, used):

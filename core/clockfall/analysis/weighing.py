@@ -13,13 +13,17 @@ import numpy as np
 from clockfall.analysis.draws import Sample, draw
 from clockfall.analysis.likelihood import theory_of
 from clockfall.analysis.masses import HEAVIEST, LIGHTEST, Misfit, mass_grid, newton_masses, search_masses
+from clockfall.analysis.node_elements import anomalistic
 from clockfall.analysis.outcome import Said
 from clockfall.analysis.posterior import Posterior, posterior
 from clockfall.analysis.study import Choices, Prediction, Study, applied_to, predicted_at, predictions
 from clockfall.analysis.system import System, Uncertain
+from clockfall.binary.constants import SECONDS_PER_DAY
 from clockfall.binary.ranges import FloatArray
 from clockfall.effects.host import Host
 from clockfall.errors import BadInput
+
+ADVANCE: Final = "longitude_of_periastron_rate"
 
 TESTED: Final = "orbital_period_rate"
 """Kept for the test of theory: it weighs the bodies only where it is named."""
@@ -56,6 +60,7 @@ def study(host: Host, system: System, choices: Choices | None = None, *, weigh_a
 
 def study_of(host: Host, system: System, choices: Choices, sample: Sample, *, weigh_anew: bool = False) -> Study:
     """Return the study of a system that is drawn already, the choices being joined with its own; see `study`."""
+    sample = by_measured_advance(sample)
     if not weigh_anew and has_masses(sample):
         return finished(host, system, choices, sample)
     used = weighing_parameters(host, system, sample, choices)
@@ -76,9 +81,35 @@ def finished(
     cautions: tuple[Said, ...] = (),
 ) -> Study:
     """Return the study of a sample whose masses are known."""
+    if sample.counts_nodes:
+
+        def advance(of: Sample) -> FloatArray:
+            found = predicted_at(host, of, choices, of.state).get(ADVANCE)
+            return np.zeros(of.state.shape) if found is None else found.intrinsic
+
+        sample = anomalistic(sample, advance)
+    if system.node_elements is not None:
+        cautions = (*cautions, _said_of_the_period(sample))
     applied = applied_to(host, sample, choices)
     predicted = predictions(applied, sample.apparent)
     return Study(system, choices, sample, applied, predicted, "weighed" if used else "given", used, cautions)
+
+
+def by_measured_advance(sample: Sample) -> Sample:
+    """Return the sample with its period from periastron to periastron, if the advance was measured; else as it is."""
+    if not (sample.counts_nodes and ADVANCE in sample.measured):
+        return sample
+    return anomalistic(sample, lambda of: of.measured[ADVANCE] - of.apparent.get(ADVANCE, 0.0))
+
+
+def _said_of_the_period(sample: Sample) -> Said:
+    by = "measured" if ADVANCE in sample.measured else "predicted"
+    P = float(sample.state.known("orbital_period")[0][0]) / SECONDS_PER_DAY
+    return Said(
+        "",
+        f"the period given counts passages of the node; from periastron to periastron it is {P:.12f} d by the {by} "
+        "advance",
+    )
 
 
 def has_masses(sample: Sample) -> bool:

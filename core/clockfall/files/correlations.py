@@ -141,7 +141,8 @@ def _addresses(system: System) -> dict[str, list[tuple[str, ...]]]:
     """Return what a correlation may call each quantity: its key, and its key with the table before it."""
     addresses: dict[str, list[tuple[str, ...]]] = {}
     for path, _ in system.quantities():
-        group = FIELDS[path[1]].group if path[1] in FIELDS else "sky"  # a parallax is no field
+        # a parallax and the elements of the node are no fields
+        group = FIELDS[path[1]].group if path[1] in FIELDS else "sky" if path[1] == "parallax" else "orbit"
         head = {"fields": group, "settings": "effects"}.get(path[0], path[0])
         for name in (path[-1], ".".join((head, *path[1:]))):
             addresses.setdefault(name, []).append(path)

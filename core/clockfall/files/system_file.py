@@ -19,7 +19,7 @@ from typing import Any, Final, Literal
 import numpy as np
 
 from clockfall.analysis.parallax import PRIORS
-from clockfall.analysis.system import System, Uncertain
+from clockfall.analysis.system import NodeElements, System, Uncertain
 from clockfall.binary.constants import SECONDS_PER_DAY
 from clockfall.binary.epoch import Epoch
 from clockfall.binary.ranges import Range
@@ -50,6 +50,7 @@ TABLES: Final = ("system", *FIELD_TABLES, "measured", "apparent", "effects", "co
 _HOMES: Final = {
     **{"name": "system", "notes": "system", "only": "effects", "without": "effects"},
     **{"parallax": "sky", "distance_prior": "sky"},
+    **dict.fromkeys(("eccentricity_sine", "eccentricity_cosine", "ascending_node_epoch"), "orbit"),
 }
 """The tables of keys that are neither a field nor measured."""
 
@@ -180,6 +181,7 @@ class _Reader:
                 self.fault((name,), f"a table: {', '.join(TABLES)}", f"{name!r}", self.misplaced(name, TABLES))
         name = self.name()
         fields, epoch, epoch_uncertainty = self.fields()
+        node_elements = self.node_elements()
         parallax, distance_prior = self.parallax()
         measured = self.values("measured", self.measured_unit)
         apparent = self.values("apparent", self.apparent_unit)
@@ -190,6 +192,7 @@ class _Reader:
             fields=fields,
             periastron_epoch=epoch,
             periastron_epoch_uncertainty=epoch_uncertainty,
+            node_elements=node_elements,
             parallax=parallax,
             distance_prior=distance_prior,
             measured=measured,
@@ -282,7 +285,7 @@ class _Reader:
             for key, value in self.table(table).items():
                 path = (table, key)
                 if key in besides:
-                    continue  # `parallax` reads them
+                    continue  # `parallax` and `node_elements` read them
                 if key not in known:
                     expected = f"a key of [{table}]: {', '.join([*known, *besides])}"
                     self.fault(path, expected, key, self.misplaced(key, [*known, *besides]))
@@ -294,6 +297,32 @@ class _Reader:
         if "parallax" in self.table("sky") and "distance" in fields:
             self.fault(("sky", "parallax"), "a distance or a parallax", "both", "leave one of them out")
         return fields, epoch, epoch_uncertainty
+
+    def node_elements(self) -> NodeElements | None:
+        """Return Laplace-Lagrange elements, which stand in the place of those of periastron."""
+        orbit = self.table("orbit")
+        names = ("eccentricity_sine", "eccentricity_cosine", "ascending_node_epoch")
+        given = [name for name in names if name in orbit]
+        if not given:
+            return None
+        for name in names:
+            if name not in orbit:
+                self.fault(("orbit", given[0]), f"{name} beside it", "none", "the three belong together")
+        if "orbital_period" not in orbit:
+            self.fault(("orbit", given[0]), "orbital_period beside it", "none")
+        for name in ("eccentricity", "one_minus_eccentricity", "longitude_of_periastron", "periastron_epoch"):
+            if name in orbit:
+                expected = f"either {name} or the elements of the node ({', '.join(names)})"
+                self.fault(("orbit", name), expected, "both", "leave one of them out")
+        numbers = [self.quantity(("orbit", name), orbit[name], "") for name in names[:2] if name in orbit]
+        epoch = self.epoch(("orbit", names[2]), orbit[names[2]]) if names[2] in orbit else None
+        sine, cosine = numbers if len(numbers) == 2 else (None, None)
+        if sine is None or cosine is None or epoch is None:
+            return None
+        e = float(np.hypot(sine.value, cosine.value))
+        if not e < 1.0:
+            self.fault(("orbit", names[0]), "an eccentricity below 1", f"{e:.6g}")
+        return NodeElements(sine, cosine, *epoch)
 
     def parallax(self) -> tuple[Uncertain | None, Literal["none", "volume"]]:
         """Return a parallax [rad] and the prior by which it becomes a distance."""
