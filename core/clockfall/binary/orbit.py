@@ -32,7 +32,7 @@ _VERSINE: Final = tuple((-1) ** k / math.factorial(2 * k + 2) for k in range(7))
 _TWO_PI: Final = 2.0 * math.pi
 
 
-@dataclass(frozen=True, slots=True, eq=False)
+@dataclass(frozen=True, eq=False)
 class SecularMotion:
     """How the elements of a binary run with time, about its `periastron_epoch`.
 
@@ -73,6 +73,11 @@ class SecularMotion:
         if getattr(self.state, name) is None:
             raise OutOfRange(name, "a value, since delays need the whole orbit", "none")
 
+    @cached_property
+    def state_along_times(self) -> BinaryState:
+        """The state with an axis added for times; shape batch + (1,)."""
+        return along_times(self.state)
+
     def seconds(self, times: Epoch) -> tuple[FloatArray, FloatArray]:
         """Return the time since the periastron epoch as the sum of two doubles [s]; shape batch + (times,)."""
         epoch = self.state.periastron_epoch
@@ -94,11 +99,11 @@ class SecularMotion:
         OutOfRange
             A time at which the period has changed by more than 5 %.
         """
-        state = along_times(self.state)
+        state = self.state_along_times
         P, e, o = state.known("orbital_period", "eccentricity", "one_minus_eccentricity")
         omega_0, x_0 = state.known("longitude_of_periastron", "projected_semi_major_axis")
         a, b = self.period_rate[..., None] / P, 0.5 * self.period_second_rate[..., None] / P
-        change = a * seconds + b * seconds**2
+        change = (a + b * seconds) * seconds
         if np.any(np.abs(change) > LARGEST_PERIOD_CHANGE):
             worst = float(np.max(np.abs(change)))
             raise OutOfRange(
