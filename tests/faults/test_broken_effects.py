@@ -9,8 +9,21 @@ from typing import Any
 import numpy as np
 import pytest
 
+from clockfall.binary.epoch import Epoch
+from clockfall.binary.orbit import Orbit, SecularMotion
 from clockfall.binary.state import BinaryState
-from clockfall.effects import Card, Caution, ClosedFormTrack, OwnParameter, Parameter, Predicted, Rate, Rates, hook
+from clockfall.effects import (
+    Card,
+    Caution,
+    ClosedFormTrack,
+    Delay,
+    OwnParameter,
+    Parameter,
+    Predicted,
+    Rate,
+    Rates,
+    hook,
+)
 from clockfall.effects.host import EffectError, UnknownEffect
 from clockfall.effects.loading import Candidate, installed_candidates, load_host
 from clockfall.errors import BadInput
@@ -364,3 +377,56 @@ def test_the_core_needs_no_built_in_effect(blocked: str) -> None:
     assert contributions
     assert blocked not in contributions
     assert not applied.failures
+
+
+def an_orbit() -> Orbit:
+    """Return an orbit at three times."""
+    state = STATE.replace(projected_semi_major_axis=2.0, periastron_epoch=Epoch(57000, 0.0))
+    zero = np.zeros(2)
+    return SecularMotion(state, *([zero] * 7)).at(np.broadcast_to(np.array([0.0, 1e4, 2e4]), (2, 3)))
+
+
+def changes_the_orbit(orbit: Orbit) -> Delay:
+    """Try to change an array that all effects share."""
+    orbit.sin_E[0, 0] = 5.0
+    return Delay(orbit.sin_E)
+
+
+BAD_DELAYS: dict[str, tuple[Callable[..., Any], str]] = {
+    "plain array": (lambda orbit: orbit.sin_E, "returned ndarray, expected Delay"),
+    "another shape": (lambda: Delay(np.ones(4)), "seconds has shape (4,), expected the batch's shape (2, 3)"),
+    "nan": (lambda orbit: Delay(np.full(orbit.shape, np.nan)), "seconds is not finite in 6 of 6"),
+    "rate of another shape": (lambda orbit: Delay(orbit.sin_E, np.ones(4)), "rate has shape (4,)"),
+    "integers": (lambda orbit: Delay(np.ones(orbit.shape, dtype=int)), "seconds is an array of int64"),
+    "raises": (lambda orbit: orbit.no_such_thing, "AttributeError"),
+    "changes the orbit": (changes_the_orbit, "read-only"),
+}
+
+
+@pytest.mark.parametrize("fault", list(BAD_DELAYS))
+def test_a_bad_delay_is_named(fault: str) -> None:
+    """A delay that cannot be added is told with the effect, the hook and what is wrong; other delays stand."""
+    function, expected = BAD_DELAYS[fault]
+    bad = candidate("broken-effect", describe=lambda: card("broken-effect", delay="broken"), delay=function)
+    fine = candidate(
+        "fine-effect", describe=lambda: card("fine-effect", delay="one second"), delay=lambda: Delay(np.float64(1.0))
+    )
+    orbit = an_orbit()
+    applied = load_host([bad, fine]).apply(STATE)
+    found = applied.delays(orbit, {})
+    assert [(by.name, float(delay.seconds[1, 2])) for by, delay in found] == [("fine-effect", 1.0)]
+    said = str(applied.failures[0])
+    assert "broken-effect" in said
+    assert "failed in delay" in said
+    assert expected in said
+    with pytest.raises(EffectError):
+        load_host([bad, fine], strict=True).apply(STATE).delays(orbit, {})
+
+
+def test_a_delay_that_the_card_does_not_describe() -> None:
+    """An effect has the delay hook if and only if its card says what the delay is; otherwise it is left out by name."""
+    silent = candidate("silent-effect", delay=lambda orbit: Delay(orbit.sin_E))
+    boastful = candidate("boastful-effect", describe=lambda: card("boastful-effect", delay="none at all"))
+    _, said = summed(silent, boastful)
+    assert len(said) == 2
+    assert all("its card describes a delay if and only if" in text for text in said)

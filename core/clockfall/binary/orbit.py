@@ -8,9 +8,9 @@ anomaly counts periods that change steadily; the advance of periastron follows t
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, fields, replace
 from functools import cached_property
-from typing import Final
+from typing import Final, TypeVar
 
 import numpy as np
 
@@ -20,6 +20,8 @@ from clockfall.binary.kepler import eccentric_anomaly
 from clockfall.binary.ranges import FloatArray
 from clockfall.binary.state import BinaryState
 from clockfall.errors import OutOfRange
+
+T = TypeVar("T")
 
 LARGEST_PERIOD_CHANGE: Final = 0.05
 """Of the period, relative: beyond it two rates do not describe the period any more."""
@@ -192,6 +194,11 @@ class Orbit:
     advance_per_radian: FloatArray
     drift: FloatArray
 
+    def __post_init__(self) -> None:
+        # all effects share these arrays
+        for field in fields(self):
+            _lock(getattr(self, field.name))
+
     @property
     def shape(self) -> tuple[int, ...]:
         """Batch + (times,)."""
@@ -204,22 +211,22 @@ class Orbit:
         if np.min(self.one_minus_eccentricity) < _NARROW:
             near = self.cos_E > 0.0
             versine = np.where(near, self.sin_E**2 / np.where(near, 1.0 + self.cos_E, 1.0), versine)
-        return self.one_minus_eccentricity + self.eccentricity * versine
+        return _lock(self.one_minus_eccentricity + self.eccentricity * versine)
 
     @cached_property
     def root(self) -> FloatArray:
         """sqrt(1 - e^2) [1]."""
-        return np.sqrt(self.one_minus_eccentricity * (1.0 + self.eccentricity))
+        return _lock(np.sqrt(self.one_minus_eccentricity * (1.0 + self.eccentricity)))
 
     @cached_property
     def eccentric_rate(self) -> FloatArray:
         """dE/dT [rad/s]."""
-        return self.mean_motion / self.one_minus_e_cos_E
+        return _lock(self.mean_motion / self.one_minus_e_cos_E)
 
     @cached_property
     def longitude_rate(self) -> FloatArray:
         """D omega/dT [rad/s]."""
-        return self.advance_per_radian * self.eccentric_rate * self.root / self.one_minus_e_cos_E + self.drift
+        return _lock(self.advance_per_radian * self.eccentric_rate * self.root / self.one_minus_e_cos_E + self.drift)
 
     def times(self) -> Epoch:
         """Return the instants of emission, TDB."""
@@ -283,15 +290,22 @@ class Orbit:
         )
 
 
+def _lock(values: T) -> T:
+    """Make an array read-only; anything else is left."""
+    if isinstance(values, np.ndarray):
+        values.flags.writeable = False
+    return values
+
+
 def along_times(state: BinaryState) -> BinaryState:
     """Return the state with an axis added for times; shape batch + (1,)."""
-    fields = {}
+    longer = {}
     for name, value in state.items():
         if isinstance(value, Epoch):
-            fields[name] = Epoch(value.day[..., None], value.fraction[..., None])
+            longer[name] = Epoch(value.day[..., None], value.fraction[..., None])
         else:
-            fields[name] = value[..., None]  # type: ignore[assignment]  # a mapping of both kinds
-    return BinaryState(**fields)
+            longer[name] = value[..., None]  # type: ignore[assignment]  # a mapping of both kinds
+    return BinaryState(**longer)
 
 
 def _beta(e: FloatArray, o: FloatArray) -> FloatArray:
