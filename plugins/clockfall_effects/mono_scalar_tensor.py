@@ -7,16 +7,19 @@ nominal solar masses with Newton's constant as light bodies show it in the solar
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import reduce
 from typing import Final
 
 import numpy as np
 
 from clockfall.binary.constants import T_SUN
+from clockfall.binary.orbit import Orbit
 from clockfall.binary.ranges import FloatArray, Range
 from clockfall.binary.state import BinaryState
-from clockfall.effects import Card, Caution, OwnParameter, Parameter, Predicted, Rate, Rates, Settings, hook
-from clockfall_effects import periastron_advance, quadrupole_decay
+from clockfall.effects import Card, Caution, Delay, OwnParameter, Parameter, Predicted, Rate, Rates, Settings, hook
+from clockfall_effects import einstein_delay, periastron_advance, quadrupole_decay, shapiro_delay
 
 # below 1 the bodies attract each other whatever the signs: 1 + alpha_1 alpha_2 > 0
 CHARGE: Final = Range(above=-1.0, below=1.0)
@@ -89,6 +92,7 @@ def describe() -> Card:
             OwnParameter("matter_charge", "", "scalar charge alpha_0 of light bodies, as in the Sun", 0.0, 0.0, CHARGE),
         ),
         replaces=("quadrupole-decay", "periastron-advance", "einstein-delay", "shapiro-delay", "dipole-radiation"),
+        delay="Einstein and Shapiro delay together, by this theory's amplitude, range and shape",
     )
 
 
@@ -203,6 +207,14 @@ def predicted_parameters(state: BinaryState, settings: Settings) -> Predicted:
     s = shapiro_shape(of, state)
     ratio = s / (1.0 + np.sqrt((1.0 - s) * (1.0 + s)))
     return Predicted({**always, "shapiro_shape": s, "orthometric_ratio": ratio, "orthometric_amplitude": r * ratio**3})
+
+
+@hook
+def delay(orbit: Orbit, parameters: Mapping[str, FloatArray]) -> Delay:
+    """Return Einstein and Shapiro delay [s], of the same forms as in general relativity; shape batch + (times,)."""
+    clock, light = einstein_delay.delay(orbit, parameters), shapiro_delay.delay(orbit, parameters)
+    rates = [part.rate for part in (clock, light) if part.rate is not None]
+    return Delay(clock.seconds + light.seconds, reduce(np.add, rates))
 
 
 # --- the waves: each returns its part of the rates of P_b [s/s] and e [1/s] -------------------------------------------

@@ -99,3 +99,23 @@ def test_sin_i_above_1_has_no_shapiro_delay(analysed: Named) -> None:
     )
     assert np.all(outcome.column("delay_shapiro_delay").values == 0.0)
     assert any("sin i =" in said.text for said in outcome.cautions)
+
+
+def test_another_theory_has_its_own_delays(analysed: Named) -> None:
+    """Under the scalar-tensor theory its own Einstein and Shapiro delays take the replaced ones' places.
+
+    Without charges they are general relativity's. A matter charge alone changes Newton's constant for light and bodies
+    alike: the bodies are weighed the heavier for it, and every delay stays.
+    """
+    pulsar = analysed("psr-b1913+16")
+    plain = delays_of(pulsar.host, pulsar.system, Choices(phases=32))
+    both = sum(plain.column(f"delay_{name}_delay").values for name in ("einstein", "shapiro"))
+
+    def theory(**own: float) -> np.ndarray:
+        settings = {"mono-scalar-tensor": {name: Uncertain(value) for name, value in own.items()}}
+        outcome = delays_of(pulsar.host, replace(pulsar.system, settings=settings), Choices(phases=32))
+        return outcome.column("delay_mono_scalar_tensor").values
+
+    assert theory(charge_1=0.0, charge_2=0.0) == pytest.approx(both, abs=1e-12)
+    assert theory(charge_1=0.0, charge_2=0.0, matter_charge=0.1) == pytest.approx(both, abs=1e-12)
+    assert np.max(np.abs(theory(charge_1=0.3, charge_2=0.3) - both)) > 1e-5  # the redshift is in part the scalar's
