@@ -88,6 +88,8 @@ def predicted_parameters(state: BinaryState, settings: Settings) -> Predicted:
 @hook
 def delay(orbit: Orbit, parameters: Mapping[str, FloatArray]) -> Delay:
     """Return the aberration delay [s]; shape batch + (times,)."""
+    if "aberration_sine_amplitude" not in parameters:  # sin i > 1: neither has a meaning
+        return Delay(np.zeros(orbit.shape))
     e, r = orbit.eccentricity, orbit.one_minus_e_cos_E
     cos_nu, sin_nu = (orbit.cos_E - e) / r, orbit.root * orbit.sin_E / r
     sine = orbit.sin_omega * (cos_nu + e) + orbit.cos_omega * sin_nu

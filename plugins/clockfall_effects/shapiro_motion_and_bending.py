@@ -79,8 +79,9 @@ def impact(rho: FloatArray, behind: FloatArray, v_K: FloatArray, v_rho: FloatArr
     v_K, v_rho, v_2 : array [c], [ls], [c^2]
         Velocity of body 2 along the line of sight, times the vector from body 2 to 1, and squared.
     """
-    z: FloatArray = np.maximum(behind, 0.0)
-    return (rho - behind) * (rho + behind) - 2.0 * z * (v_rho - v_K * behind) + z**2 * (v_2 - v_K**2)
+    z = np.maximum(behind, 0.0)
+    b_2: FloatArray = (rho - behind) * (rho + behind) - 2.0 * z * (v_rho - v_K * behind) + z**2 * (v_2 - v_K**2)
+    return b_2
 
 
 def motion(

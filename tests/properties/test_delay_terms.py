@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -155,9 +156,7 @@ def test_annual_orbital_parallax_has_the_published_signs() -> None:
     sine = math.sin(omega) * along + math.cos(omega) * across
     cosine = math.cos(omega) * along - math.sin(omega) * across
     a_1 = x / math.sin(i)
-    east, north = annual_orbital_parallax.on_the_sky(
-        a_1 * cosine, a_1 * sine * math.cos(i), np.array(Omega)
-    )
+    east, north = annual_orbital_parallax.on_the_sky(a_1 * cosine, a_1 * sine * math.cos(i), np.array(Omega))
     np.testing.assert_allclose(-(east * X + north * Y) / d, dx * sine + x * d_omega * cosine, rtol=1e-12, atol=1e-22)
 
 
@@ -191,10 +190,7 @@ def by_the_retarded_field(rho: np.ndarray, v: np.ndarray, r: float, end: float) 
     z = rho[2]
     points = [z - 1.0, z - 0.1, z, z + 0.1, z + 1.0, 10.0, 100.0, 1e4, end]
     stops = sorted({0.0, *(p for p in points if p > 0.0)})
-    return sum(
-        quad(field, low, high, epsabs=1e-22, epsrel=1e-13, limit=500)[0]
-        for low, high in zip(stops, stops[1:], strict=False)
-    )
+    return sum(quad(field, low, high, epsabs=1e-22, epsrel=1e-13, limit=500)[0] for low, high in pairwise(stops))
 
 
 @pytest.mark.parametrize(
@@ -234,9 +230,10 @@ def time_in_schwarzschild(m: mpf, r_0: mpf, r: mpf) -> tuple[mpf, mpf]:
         cubic = R * R + R * r_0 + r_0 * r_0 - b_2
         return 2 * mp.sqrt(R**3 / cubic)
 
+    last = mp.sqrt(r - r_0)
     ends = [mpf(0)]
-    while ends[-1] ** 2 < r - r_0:
-        ends.append(min(mp.sqrt(r_0) if ends[-1] == 0 else 2 * ends[-1], mp.sqrt(r - r_0)))
+    while ends[-1] < last:
+        ends.append(min(mp.sqrt(r_0) if ends[-1] == 0 else 2 * ends[-1], last))
     time = mp.quad(lambda w: slope(w) / (1 - 2 * m / (r_0 + w * w)), ends)
     angle = mp.quad(lambda w: slope(w) * mp.sqrt(b_2) / (r_0 + w * w) ** 2, ends)
     return time, angle
