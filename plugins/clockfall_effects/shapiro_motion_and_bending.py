@@ -79,7 +79,7 @@ def impact(rho: FloatArray, behind: FloatArray, v_K: FloatArray, v_rho: FloatArr
     v_K, v_rho, v_2 : array [c], [ls], [c^2]
         Velocity of body 2 along the line of sight, times the vector from body 2 to 1, and squared.
     """
-    z = np.maximum(behind, 0.0)
+    z: FloatArray = np.maximum(behind, 0.0)
     b_2: FloatArray = (rho - behind) * (rho + behind) - 2.0 * z * (v_rho - v_K * behind) + z**2 * (v_2 - v_K**2)
     return b_2
 
@@ -99,7 +99,7 @@ def motion(
     ray is (1 + v_K) times the logarithm of b^2/(rho + z), b taken as the light passes, rho + z at the retarded time.
     """
     plain = rho - behind
-    z = np.maximum(behind, 0.0)
+    z: FloatArray = np.maximum(behind, 0.0)
     moved = -(v_rho - v_K * behind) + (v_2 - v_K**2) * z**2 / (rho + z)
     return -2.0 * r * (np.log1p(moved / plain) + v_K * (np.log(plain / a) - 1.0))
 
